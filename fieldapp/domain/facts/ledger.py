@@ -1,0 +1,54 @@
+"""Facts about the record itself: logs, corrections, clocks."""
+
+from collections.abc import Mapping
+from typing import Any
+
+from fieldapp.domain.facts.base import ALL, ROUTE_LAB, Done, Fact, fact, private
+
+
+@fact("log.opened", place="ledger", reach=ALL)
+class LogOpened(Fact):
+    """The first entry of every log: whose key signs it and which log came before."""
+
+    public_key: str
+    why: str
+    clock: str = ""
+    prev_log: str = ""
+    prev_head: str = ""
+
+
+@fact("log.carried", place="ledger", reach=ALL)
+class LogCarried(Fact):
+    """An entry of a branch that central does not hold, carried whole into the new log."""
+
+    body: str
+    sig: str
+    log: str = ""
+    private: str = ""
+
+
+@fact("clock.checked", place="ledger", reach=ALL)
+class ClockChecked(Fact):
+    """One comparison of this device's clock with central's, at a session."""
+
+    central_at: str
+    rtt_ms: int
+    offset_ms: int
+
+
+@fact("entry.corrected", place="ledger", reach=ROUTE_LAB)
+class EntryCorrected(Done):
+    """New data for an earlier entry; the old one stays and is shown struck through."""
+
+    of: str
+    kind_: str
+    data_: Mapping[str, Any]
+    reason: str = private()
+
+
+@fact("entry.withdrawn", place="ledger", reach=ROUTE_LAB)
+class EntryWithdrawn(Done):
+    """An earlier entry is taken back, with a reason; it stays readable."""
+
+    of: str
+    reason: str = private()
