@@ -1,0 +1,44 @@
+"""A fact together with its envelope: who recorded it, where in which log, by which clock."""
+
+from dataclasses import dataclass
+from datetime import UTC, datetime, timedelta
+
+from fieldapp.domain.facts.base import Done, Fact
+
+
+@dataclass(frozen=True, slots=True)
+class Recorded:
+    """One entry as the rules read it. ``at`` is aware UTC, ``off`` minutes east, ``mono`` ms."""
+
+    fact: Fact
+    hash: str
+    log: str
+    seq: int
+    at: datetime
+    off: int
+    mono: int
+    boot: str
+    by: str
+    act: str = ""
+    replaces: str = ""
+
+    @property
+    def done_at(self) -> datetime:
+        """When it was done: as stated, else at the press."""
+        if isinstance(self.fact, Done) and self.fact.done_at:
+            return datetime.fromisoformat(self.fact.done_at).astimezone(UTC)
+        return self.at
+
+
+@dataclass(frozen=True, slots=True)
+class Reading:
+    """One reading of this node's clock: wall (aware UTC), offset in minutes, ms that count sleep."""
+
+    at: datetime
+    off: int
+    mono: int
+    boot: str
+
+    def since(self, earlier: datetime) -> timedelta:
+        """Return how long ago that instant was by the wall clock."""
+        return self.at - earlier
