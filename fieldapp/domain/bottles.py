@@ -1,0 +1,145 @@
+"""One bottle's standing, told from the facts about it; any order of arrival gives the same."""
+
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, field
+from datetime import datetime
+
+from fieldapp.domain.facts import (
+    AnalysisDecided,
+    BottleFilled,
+    BottleIssued,
+    BottleReceived,
+    BottleSet,
+    BottleVoided,
+    Fact,
+    LabelsPrinted,
+    ResultReported,
+)
+from fieldapp.domain.recorded import Recorded
+
+
+@dataclass(frozen=True, slots=True)
+class BottleStanding:
+    """What is known of one bottle. Lists keep every contradicting fact, oldest first."""
+
+    bottle: str
+    issued: tuple[Recorded, ...] = ()
+    printed: int = 0
+    voided: Recorded | None = None
+    sets: tuple[Recorded, ...] = ()
+    fillings: tuple[Recorded, ...] = ()
+    receipts: tuple[Recorded, ...] = ()
+    decisions: tuple[Recorded, ...] = ()
+    results: dict[str, tuple[Recorded, ...]] = field(default_factory=dict)
+
+    @property
+    def plan(self) -> BottleIssued | None:
+        """The issue that binds the code: the first one recorded."""
+        found = self.issued[0].fact if self.issued else None
+        return found if isinstance(found, BottleIssued) else None
+
+    @property
+    def binding(self) -> BottleSet | None:
+        """The latest scan that stood the bottle in an order; it binds a spare (R15)."""
+        found = self.sets[-1].fact if self.sets else None
+        return found if isinstance(found, BottleSet) else None
+
+    @property
+    def visit(self) -> str:
+        """The visit that filled it, else the one it was set at, else the one printed for."""
+        if self.fillings:
+            return _named(self.fillings[-1].fact, "visit")
+        if self.binding:
+            return self.binding.visit
+        return self.plan.visit if self.plan else ""
+
+    @property
+    def draw(self) -> int:
+        """The draw it holds, or is meant for."""
+        if self.fillings and isinstance(self.fillings[-1].fact, BottleFilled):
+            return self.fillings[-1].fact.draw
+        if self.binding:
+            return self.binding.draw
+        return self.plan.draw if self.plan else 0
+
+    @property
+    def purpose(self) -> str:
+        """Why it is drawn: as issued, else as bound; fixed before it is drawn (R5)."""
+        if self.plan and self.plan.purpose:
+            return self.plan.purpose
+        return self.binding.purpose if self.binding else ""
+
+    @property
+    def kind(self) -> str:
+        """First-draw, sequential, blank … as issued, else as bound."""
+        if self.plan and self.plan.kind_:
+            return self.plan.kind_
+        return self.binding.kind_ if self.binding else ""
+
+    @property
+    def spare(self) -> bool:
+        """Issued without a draw (R15)."""
+        return self.plan is not None and not self.plan.draw
+
+    @property
+    def filled_at(self) -> datetime | None:
+        """When it was filled, by the latest filling."""
+        return self.fillings[-1].done_at if self.fillings else None
+
+    @property
+    def receipt(self) -> BottleReceived | None:
+        """The laboratory's latest act on it."""
+        found = self.receipts[-1].fact if self.receipts else None
+        return found if isinstance(found, BottleReceived) else None
+
+    @property
+    def decision(self) -> AnalysisDecided | None:
+        """The latest decision on a held bottle."""
+        found = self.decisions[-1].fact if self.decisions else None
+        return found if isinstance(found, AnalysisDecided) else None
+
+
+def tell(bottle: str, recorded: Iterable[Recorded]) -> BottleStanding:
+    """Return the standing of that bottle from the living facts about it."""
+    ordered = in_order(recorded)
+    results: dict[str, list[Recorded]] = {}
+    for entry in ordered:
+        if isinstance(entry.fact, ResultReported):
+            results.setdefault(entry.fact.analyte, []).append(entry)
+    voids = _of(ordered, BottleVoided)
+    return BottleStanding(
+        bottle=bottle,
+        issued=_of(ordered, BottleIssued),
+        printed=len(_of(ordered, LabelsPrinted)),
+        voided=voids[-1] if voids else None,
+        sets=_of(ordered, BottleSet),
+        fillings=_of(ordered, BottleFilled),
+        receipts=_of(ordered, BottleReceived),
+        decisions=_of(ordered, AnalysisDecided),
+        results={analyte: tuple(found) for analyte, found in results.items()},
+    )
+
+
+def in_order(recorded: Iterable[Recorded]) -> list[Recorded]:
+    """Return entries by the time they were recorded; within a log by seq whatever its clock said.
+
+    Order inside a log is its seq; between logs the clock is only what a page shows (design 2).
+    """
+    by_log: dict[str, list[Recorded]] = {}
+    for entry in recorded:
+        by_log.setdefault(entry.log, []).append(entry)
+    keyed: list[tuple[datetime, str, int, Recorded]] = []
+    for log, entries in by_log.items():
+        latest = None
+        for entry in sorted(entries, key=lambda one: one.seq):
+            latest = entry.at if latest is None else max(latest, entry.at)
+            keyed.append((latest, log, entry.seq, entry))
+    return [entry for *_, entry in sorted(keyed, key=lambda key: key[:3])]
+
+
+def _of(ordered: Sequence[Recorded], kind: type[Fact]) -> tuple[Recorded, ...]:
+    return tuple(entry for entry in ordered if isinstance(entry.fact, kind))
+
+
+def _named(given: Fact, name: str) -> str:
+    return str(getattr(given, name, ""))
