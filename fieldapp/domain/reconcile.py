@@ -1,4 +1,4 @@
-"""Findings: facts that do not agree, or an absence that can be known. Never a merge, never a repair.
+"""Findings: facts that do not agree, or an absence that can be known. Never a merge or repair.
 
 A finding's id is made from kind, subject and the hashes of its evidence, so new evidence makes a
 new finding and the former settlement stays visible beside it (design 5). A finding that time alone
