@@ -1,0 +1,274 @@
+"""The face of one label: a QR, a code to read aloud, a few lines, ruled space for a pen.
+
+All lengths are points (1/72 inch), measured from the label's lower left corner. Black only, for
+thermal paper. Whatever the words, nothing leaves the label: text grows or shrinks as one, then
+the least needed lines go, then a line is cut with an ellipsis. The code is never cut.
+"""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from fieldapp.printing import qr
+from fieldapp.printing.sheets import POINTS_A_MM
+
+if TYPE_CHECKING:
+    from reportlab.pdfgen.canvas import Canvas
+
+PLAIN, BOLD = "Helvetica", "Helvetica-Bold"
+
+# Printers feed a little askew; text keeps this far from the edge. The QR has its quiet zone.
+PADDING = 1.4 * POINTS_A_MM
+
+# The symbol itself is 14 mm wide on labels from 48 mm on; a smaller label keeps 14 mm with the
+# quiet zone, or no room for a pen is left beside it.
+QR_WIDE_LABEL = 48 * POINTS_A_MM
+QR_LEAST = 14.5 * POINTS_A_MM
+QR_LEAST_WIDE = 14.1 * POINTS_A_MM * qr.OUTER_MODULES / qr.SIDE_MODULES
+QR_MOST = 28 * POINTS_A_MM
+QR_SHARE = 0.35
+
+CODE_SIZE, CAPTION_SIZE, CAPTION_LEAST = 15.0, 5.0, 4.2
+LEADING, ASCENT = 1.16, 0.93
+PEN_WANTED, PEN_LEAST, PEN_MOST = 14.0, 8.0, 30.0
+PEN_GAP = 4.0
+LINE_WIDTH = 0.4
+
+GROWN = (1.8, 1.6, 1.4, 1.25, 1.1)
+SHRUNK = (1.0, 0.92, 0.85)
+LAST_RESORT = (0.85, 0.75, 0.66)
+
+
+@dataclass(frozen=True)
+class Row:
+    """One thing to say: its wordings from the fullest to the shortest, and its size in points."""
+
+    wordings: tuple[str, ...]
+    size: float
+    font: str = PLAIN
+
+
+@dataclass(frozen=True)
+class Face:
+    """What a label says. ``optional`` rows stand above the pen's lines, the last goes first.
+
+    ``pens`` are the captions of the ruled lines, row by row; ``foot`` stands below them.
+    """
+
+    code: str
+    grouped: str
+    rows: tuple[Row, ...]
+    pens: tuple[tuple[str, ...], ...]
+    optional: tuple[Row, ...] = ()
+    foot: tuple[Row, ...] = ()
+    optional_foot: tuple[Row, ...] = ()
+
+
+@dataclass(frozen=True)
+class Line:
+    """A line of text as it will stand, with its size in points."""
+
+    text: str
+    font: str
+    size: float
+
+    @property
+    def height(self) -> float:
+        return self.size * LEADING
+
+
+@dataclass(frozen=True)
+class Arrangement:
+    """Lines above, pen rows of one height, lines below: what fits a column."""
+
+    above: tuple[Line, ...]
+    pen_height: float
+    caption_size: float
+    below: tuple[Line, ...]
+
+
+def draw_face(canvas: "Canvas", face: Face, width: float, height: float) -> None:
+    """Draw the label with its lower left corner at the canvas's present origin."""
+    side, column = _split(width, height)
+    _draw_qr(canvas, face.code, *_qr_corner(side, width, height), side)
+    left, bottom, room, tall = column
+    _draw_column(canvas, face, _arrange(face, room, tall), left, bottom, room, tall)
+
+
+def _split(width: float, height: float) -> tuple[float, tuple[float, float, float, float]]:
+    """Return the side of the QR with quiet zone, and the column of text beside or below it."""
+    least = QR_LEAST_WIDE if width >= QR_WIDE_LABEL else QR_LEAST
+    if _is_upright(width, height):
+        side = min(max(least, 0.4 * height), width, QR_MOST)
+        return side, (PADDING, PADDING, width - 2 * PADDING, height - side - PADDING)
+    side = min(max(least, QR_SHARE * width), height, QR_MOST)
+    return side, (side, PADDING, width - side - PADDING, height - 2 * PADDING)
+
+
+def _is_upright(width: float, height: float) -> bool:
+    return height >= 1.2 * width
+
+
+def _qr_corner(side: float, width: float, height: float) -> tuple[float, float]:
+    return (0.0, height - side) if _is_upright(width, height) else (0.0, (height - side) / 2)
+
+
+def _draw_qr(canvas: "Canvas", code: str, left: float, bottom: float, side: float) -> None:
+    # One path of whole-number rectangles: no seams between modules, and a small file.
+    canvas.saveState()
+    canvas.translate(left, bottom)
+    canvas.scale(side / qr.OUTER_MODULES, side / qr.OUTER_MODULES)
+    path = canvas.beginPath()
+    for column, row, length in qr.dark_runs(code):
+        path.rect(column, row, length, 1)
+    canvas.drawPath(path, stroke=0, fill=1)
+    canvas.restoreState()
+
+
+def _arrange(face: Face, width: float, height: float) -> Arrangement:
+    """Return the largest arrangement with all rows; else fewer rows; else smaller and cut."""
+    rest = len(face.optional) + len(face.optional_foot)
+    for scale in GROWN:
+        found = _fit(face, width, height, scale, rest, most_lines=1)
+        if found:
+            return found
+    for kept in range(rest, -1, -1):
+        for scale in SHRUNK:
+            found = _fit(face, width, height, scale, kept, most_lines=2)
+            if found:
+                return found
+    for scale, most_lines in _desperate():
+        found = _fit(face, width, height, scale, 0, most_lines, least_pen=PEN_LEAST, cut=True)
+        if found:
+            return found
+    raise AssertionError(f"a label column of {width:.0f} x {height:.0f} points holds nothing")
+
+
+def _desperate() -> Iterator[tuple[float, int]]:
+    for most_lines in (2, 1):
+        for scale in LAST_RESORT:
+            yield scale, most_lines
+
+
+def _fit(
+    face: Face,
+    width: float,
+    height: float,
+    scale: float,
+    kept: int,
+    most_lines: int,
+    least_pen: float = PEN_WANTED,
+    cut: bool = False,
+) -> Arrangement | None:
+    """Return the arrangement at this scale with that many optional rows kept, or none."""
+    optional = face.optional[:kept]
+    optional_foot = face.optional_foot[: max(0, kept - len(face.optional))]
+    above = [_code_line(face.grouped, width, scale)]
+    below: list[Line] = []
+    for rows, lines in ((face.rows + optional, above), (face.foot + optional_foot, below)):
+        for row in rows:
+            set_lines = _set_row(row, width, scale, most_lines, cut)
+            if set_lines is None:
+                return None
+            lines.extend(set_lines)
+    caption = max(CAPTION_LEAST, CAPTION_SIZE * scale)
+    used = sum(line.height for line in above + below) + len(face.pens) * caption * LEADING
+    pen_height = (height - used) / len(face.pens)
+    if pen_height < least_pen * max(1.0, scale):
+        return None
+    return Arrangement(tuple(above), min(pen_height, PEN_MOST), caption, tuple(below))
+
+
+def _code_line(grouped: str, width: float, scale: float) -> Line:
+    widest = width / _text_width(grouped, BOLD, 1.0)
+    return Line(grouped, BOLD, min(CODE_SIZE * scale, widest))
+
+
+def _set_row(row: Row, width: float, scale: float, most_lines: int, cut: bool) -> list[Line] | None:
+    """Return the lines of a row: on one line if a little smaller will do, else broken."""
+    size = row.size * scale
+    for wording in row.wordings:
+        for slightly in (1.0, 0.94, 0.88):
+            if _text_width(wording, row.font, size * slightly) <= width:
+                return [Line(wording, row.font, size * slightly)]
+        lines = _broken(wording, row.font, size, width)
+        if len(lines) <= most_lines and all(
+            _text_width(line, row.font, size) <= width for line in lines
+        ):
+            return [Line(line, row.font, size) for line in lines]
+    if not cut:
+        return None
+    lines = _broken(row.wordings[-1], row.font, size, width)
+    kept = [*lines[: most_lines - 1], " ".join(lines[most_lines - 1 :])]
+    return [Line(_elided(line, row.font, size, width), row.font, size) for line in kept]
+
+
+def _broken(text: str, font: str, size: float, width: float) -> list[str]:
+    """Return the text broken at plain spaces; a no-break space holds a number to its unit."""
+    lines: list[str] = []
+    for word in text.split(" "):
+        longer = f"{lines[-1]} {word}" if lines else word
+        if lines and _text_width(longer, font, size) <= width:
+            lines[-1] = longer
+        else:
+            lines.append(word)
+    # A dot that parts two things says nothing at the end or the beginning of a line.
+    return [line.removesuffix(" ·").removeprefix("· ") for line in lines if line != "·"]
+
+
+def _elided(text: str, font: str, size: float, width: float) -> str:
+    if _text_width(text, font, size) <= width:
+        return text
+    while text and _text_width(text + "…", font, size) > width:
+        text = text[:-1]
+    return text.rstrip(" ·,") + "…"
+
+
+def _text_width(text: str, font: str, size: float) -> float:
+    from reportlab.pdfbase.pdfmetrics import stringWidth
+
+    return float(stringWidth(text, font, size))
+
+
+def _draw_column(
+    canvas: "Canvas",
+    face: Face,
+    arrangement: Arrangement,
+    left: float,
+    bottom: float,
+    width: float,
+    height: float,
+) -> None:
+    top = bottom + height
+    for line in arrangement.above:
+        _draw_line(canvas, line, left, top)
+        top -= line.height
+    row_height = arrangement.pen_height + arrangement.caption_size * LEADING
+    top = bottom + sum(line.height for line in arrangement.below) + row_height * len(face.pens)
+    for captions in face.pens:
+        top -= arrangement.pen_height
+        _draw_pens(canvas, captions, arrangement.caption_size, left, top, width)
+        top -= arrangement.caption_size * LEADING
+    for line in arrangement.below:
+        _draw_line(canvas, line, left, top)
+        top -= line.height
+
+
+def _draw_line(canvas: "Canvas", line: Line, left: float, top: float) -> None:
+    canvas.setFont(line.font, line.size)
+    canvas.drawString(left, top - ASCENT * line.size, line.text)
+
+
+def _draw_pens(
+    canvas: "Canvas", captions: tuple[str, ...], size: float, left: float, top: float, width: float
+) -> None:
+    """Rule one line a caption, the first half as wide again, with the caption below it."""
+    shares = [1.5] + [1.0] * (len(captions) - 1)
+    room = width - PEN_GAP * (len(captions) - 1)
+    canvas.setLineWidth(LINE_WIDTH)
+    for caption, share in zip(captions, shares, strict=True):
+        length = room * share / sum(shares)
+        canvas.line(left, top - LINE_WIDTH, left + length, top - LINE_WIDTH)
+        text = _elided(caption, PLAIN, size, length)
+        _draw_line(canvas, Line(text, PLAIN, size), left, top - LINE_WIDTH)
+        left += length + PEN_GAP
