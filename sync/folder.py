@@ -21,11 +21,11 @@ DRIVE_REMOTE = 4  # GetDriveTypeW
 
 # File systems that live on another machine: their locks and flushes promise less than SQLite
 # needs (SQLite, "How To Corrupt An SQLite Database File", section 2.1).
-NETWORK_FILE_SYSTEMS = frozenset(
-    ("afs", "ceph", "cifs", "coda", "davfs", "fuse.davfs", "fuse.glusterfs", "fuse.rclone")
-    + ("fuse.s3fs", "fuse.sshfs", "glusterfs", "lustre", "ncpfs", "nfs", "nfs3", "nfs4")
-    + ("smb2", "smb3", "smbfs")
-)
+NETWORK_FILE_SYSTEMS = {
+    *("afs", "ceph", "cifs", "coda", "davfs", "fuse.davfs", "fuse.glusterfs", "fuse.rclone"),
+    *("fuse.s3fs", "fuse.sshfs", "glusterfs", "lustre", "ncpfs", "nfs", "nfs3", "nfs4"),
+    *("smb2", "smb3", "smbfs"),
+}
 # Folders that another program copies about: names that end in a glued-on Cloud or Drive, and
 # the two places where one desktop system keeps them. It cannot know all.
 COPIED_FOLDER = re.compile(

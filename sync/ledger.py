@@ -1,14 +1,33 @@
 """The record in SQLite: append, read, heads, scopes. The caller opens and ends transactions."""
 
-import hashlib
 import sqlite3
-from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
-from sync.acknowledgement import Acknowledgement
-from sync.encoding import b64, unb64
-from sync.entry import Entry, Realm, digest, private_part, scopes_of
-from sync.errors import Fork, Gap, NotKept
+from sync.encoding import b64
+from sync.entry import Entry, Realm, scopes_of
+from sync.errors import Fork, Gap
+from sync.rows import (
+    ROW,
+    Head,
+    entry_of,
+    find,
+    index_scopes,
+    keep_private,
+    read_back,
+    with_private,
+)
+from sync.shares import (
+    acknowledged,
+    borrow,
+    borrowed_of,
+    cursors,
+    drop_acknowledgement,
+    drop_cursors,
+    drop_scope,
+    keep_acknowledgement,
+    scoped,
+    set_cursor,
+)
 from sync.tables import make_tables, prepare
 
 __all__ = [
@@ -28,6 +47,7 @@ __all__ = [
     "heads",
     "keep_acknowledgement",
     "keep_private",
+    "last_stated",
     "logs",
     "make_tables",
     "next_stated",
@@ -35,20 +55,11 @@ __all__ = [
     "read",
     "scoped",
     "set_cursor",
+    "with_private",
 ]
 
 MOST_BYTES = 1 << 20
 NO_ENTRY = b""
-ROW = "log, seq, hash, body, sig"
-Row = tuple[str, int, bytes, bytes, bytes]
-
-
-@dataclass(frozen=True, slots=True)
-class Head:
-    """A place in a log and the hash there, which says everything about what is before it."""
-
-    seq: int
-    hash: bytes
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,21 +127,12 @@ def read(
             (log, max(first, stretch.first), stretch.before, stretch.before, most - len(found)),
         )
         for row in rows:
-            entry = with_private(db, _entry(row))
+            entry = with_private(db, entry_of(row))
             size += len(entry.body) + len(entry.private or b"")
             if found and size > most_bytes:
                 return found
             found.append(entry)
     return found
-
-
-def find(db: sqlite3.Connection, hash: bytes) -> Entry | None:
-    """Return the entry of this hash: from whole logs, else borrowed, else of a branch."""
-    for table in ("entry", "borrowed", "branch"):
-        row = db.execute(f"SELECT {ROW} FROM {table} WHERE hash = ? LIMIT 1", (hash,)).fetchone()
-        if row is not None:
-            return with_private(db, _entry(row))
-    return None
 
 
 def add(
@@ -158,38 +160,10 @@ def add(
         "INSERT INTO entry VALUES (?, ?, ?, ?, ?, ?, ?)",
         (entry.log, entry.seq, entry.hash, entry.body, entry.sig, at, frm),
     )
-    _read_back(db, "entry", entry, realm)
+    read_back(db, "entry", entry, realm)
     db.execute("DELETE FROM borrowed WHERE hash = ?", (entry.hash,))
     keep_private(db, entry)
-    _index(db, entry, scopes_of(fields))
-
-
-def borrow(
-    db: sqlite3.Connection,
-    entry: Entry,
-    *,
-    scope: str | Sequence[str],
-    at: str,
-    frm: str,
-    realm: Realm | None = None,
-) -> bool:
-    """Keep one verified entry of another's log under the scope it was pulled by.
-
-    Returns whether the node did not hold it before, so that it has to be followed.
-    """
-    known = db.execute(
-        "SELECT 1 FROM entry WHERE hash = :h UNION ALL SELECT 1 FROM borrowed WHERE hash = :h",
-        {"h": entry.hash},
-    ).fetchone()
-    if known is None:
-        db.execute(
-            "INSERT INTO borrowed VALUES (?, ?, ?, ?, ?, ?, ?)",
-            (entry.log, entry.seq, entry.hash, entry.body, entry.sig, at, frm),
-        )
-        _read_back(db, "borrowed", entry, realm)
-    keep_private(db, entry)
-    _index(db, entry, [scope] if isinstance(scope, str) else scope)
-    return known is None
+    index_scopes(db, entry, scopes_of(fields))
 
 
 def add_branch(
@@ -215,7 +189,7 @@ def add_branch(
         "INSERT INTO branch VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
         (entry.log, entry.seq, entry.hash, entry.body, entry.sig, at, frm, stated),
     )
-    _read_back(db, "branch", entry, realm)
+    read_back(db, "branch", entry, realm)
     keep_private(db, entry)
     return True
 
@@ -230,116 +204,6 @@ def last_stated(db: sqlite3.Connection, log: str) -> int:
     """Return the mark of the history that heads are stated by; 0 is the log's own."""
     stretches = _stretches(db, log)
     return stretches[-1].stated if stretches else 0
-
-
-def keep_private(db: sqlite3.Connection, entry: Entry) -> None:
-    """Keep the private part that came with a verified entry, if it is not held."""
-    if entry.private is not None:
-        h = hashlib.sha256(entry.private).digest()
-        if db.execute("SELECT 1 FROM private WHERE h = ?", (h,)).fetchone() is None:
-            db.execute("INSERT INTO private VALUES (?, ?)", (h, entry.private))
-
-
-def with_private(db: sqlite3.Connection, entry: Entry) -> Entry:
-    """Return the entry with its private part attached, if that is held."""
-    if b'"priv":' not in entry.body:  # spares parsing of the many that have none
-        return entry
-    label = private_part(entry.fields())
-    if label is None:
-        return entry
-    try:
-        h = unb64(label["h"])
-    except (KeyError, ValueError):
-        return entry
-    row = db.execute("SELECT p FROM private WHERE h = ?", (h,)).fetchone()
-    private = None if row is None else bytes(row[0])
-    return Entry(entry.log, entry.seq, entry.hash, entry.body, entry.sig, private)
-
-
-def set_cursor(db: sqlite3.Connection, scope: str, log: str, place: Head) -> None:
-    """Remember the entry last got of one log under one scope."""
-    db.execute(
-        "INSERT INTO cursor VALUES (?, ?, ?, ?) ON CONFLICT (scope, log) "
-        "DO UPDATE SET seq = excluded.seq, hash = excluded.hash",
-        (scope, log, place.seq, place.hash),
-    )
-
-
-def cursors(db: sqlite3.Connection) -> dict[str, dict[str, Head]]:
-    """Return by scope and log the entry last got."""
-    found: dict[str, dict[str, Head]] = {}
-    for scope, log, seq, hash_ in db.execute("SELECT scope, log, seq, hash FROM cursor"):
-        found.setdefault(scope, {})[log] = Head(seq, bytes(hash_))
-    return found
-
-
-def drop_cursors(db: sqlite3.Connection, log: str) -> None:
-    """Forget how far one log was got, so that it is pulled again from its beginning."""
-    db.execute("DELETE FROM cursor WHERE log = ?", (log,))
-
-
-def drop_scope(db: sqlite3.Connection, scope: str) -> None:
-    """Give back what was borrowed by one scope and by no other, with its cursors."""
-    db.execute("DELETE FROM cursor WHERE scope = ?", (scope,))
-    db.execute(
-        "DELETE FROM entry_scope WHERE scope = ? AND hash IN (SELECT hash FROM borrowed)",
-        (scope,),
-    )
-    db.execute("DELETE FROM borrowed WHERE hash NOT IN (SELECT hash FROM entry_scope)")
-
-
-def scoped(db: sqlite3.Connection, scope: str, after: Mapping[str, Head], most: int) -> list[Entry]:
-    """Return what one scope holds past the cursors, by (log, seq), at most so many.
-
-    A log without a cursor starts at its beginning.
-    """
-    found: list[Entry] = []
-    for log in _logs_of_scope(db, scope):
-        start = after[log].seq if log in after else 0
-        rows = db.execute(
-            "SELECT hash FROM entry_scope WHERE scope = ? AND log = ? AND seq > ? "
-            "ORDER BY seq, hash LIMIT ?",
-            (scope, log, start, most - len(found)),
-        ).fetchall()
-        for (hash_,) in rows:
-            entry = find(db, hash_)
-            if entry is not None:
-                found.append(entry)
-        if len(found) >= most:
-            break
-    return found
-
-
-def borrowed_of(db: sqlite3.Connection, log: str, after: int, most: int) -> list[Entry]:
-    """Return the borrowed entries of one log past a place, in order, private parts attached."""
-    rows = db.execute(
-        f"SELECT {ROW} FROM borrowed WHERE log = ? AND seq > ? ORDER BY seq, hash LIMIT ?",
-        (log, after, most),
-    ).fetchall()
-    return [with_private(db, _entry(row)) for row in rows]
-
-
-def acknowledged(db: sqlite3.Connection, log: str) -> Acknowledgement | None:
-    """Return central's last verified acknowledgement for a log, or None."""
-    row = db.execute(
-        "SELECT at, hash, key, log, seq, sig FROM acknowledgement WHERE log = ?", (log,)
-    ).fetchone()
-    return None if row is None else Acknowledgement(*row)
-
-
-def keep_acknowledgement(db: sqlite3.Connection, given: Acknowledgement) -> None:
-    """Keep a verified acknowledgement in place of the log's last one."""
-    db.execute(
-        "INSERT INTO acknowledgement (log, seq, hash, at, key, sig) VALUES (?, ?, ?, ?, ?, ?) "
-        "ON CONFLICT (log) DO UPDATE SET seq = excluded.seq, hash = excluded.hash, "
-        "at = excluded.at, key = excluded.key, sig = excluded.sig",
-        (given.log, given.seq, given.hash, given.at, given.key, given.sig),
-    )
-
-
-def drop_acknowledgement(db: sqlite3.Connection, log: str) -> None:
-    """Take "received" back to "waiting": central no longer holds what it acknowledged."""
-    db.execute("DELETE FROM acknowledgement WHERE log = ?", (log,))
 
 
 def _stretches(db: sqlite3.Connection, log: str) -> list[_Stretch]:
@@ -362,39 +226,3 @@ def _table(stretch: _Stretch) -> str:
     if stretch.stated == 0:
         return "entry WHERE log = ?"
     return f"branch WHERE stated = {stretch.stated} AND log = ?"
-
-
-def _entry(row: Row) -> Entry:
-    log, seq, hash_, body, sig = row
-    return Entry(log, seq, bytes(hash_), bytes(body), bytes(sig))
-
-
-def _index(db: sqlite3.Connection, entry: Entry, scopes: Sequence[str]) -> None:
-    # ON CONFLICT, not OR IGNORE: only the very same row may be there already.
-    db.executemany(
-        "INSERT INTO entry_scope VALUES (?, ?, ?, ?) ON CONFLICT DO NOTHING",
-        [(scope, entry.log, entry.seq, entry.hash) for scope in scopes],
-    )
-
-
-def _logs_of_scope(db: sqlite3.Connection, scope: str) -> Iterator[str]:
-    log = ""
-    while True:
-        row = db.execute(
-            "SELECT MIN(log) FROM entry_scope WHERE scope = ? AND log > ?", (scope, log)
-        ).fetchone()
-        if row[0] is None:
-            return
-        log = row[0]
-        yield log
-
-
-def _read_back(db: sqlite3.Connection, table: str, entry: Entry, realm: Realm | None) -> None:
-    row = db.execute(
-        f"SELECT {ROW} FROM {table} WHERE log = ? AND seq = ? AND hash = ?",
-        (entry.log, entry.seq, entry.hash),
-    ).fetchone()
-    kept = None if row is None else _entry(row)
-    wanted = Entry(entry.log, entry.seq, entry.hash, entry.body, entry.sig)
-    if kept != wanted or (realm is not None and digest(realm, kept.body) != kept.hash):
-        raise NotKept(entry.log, entry.seq)

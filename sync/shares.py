@@ -1,0 +1,134 @@
+"""What passes between nodes: entries by scope, cursors, acknowledgements."""
+
+import sqlite3
+from collections.abc import Iterator, Mapping, Sequence
+
+from sync.acknowledgement import Acknowledgement
+from sync.entry import Entry, Realm
+from sync.rows import ROW, Head, entry_of, find, index_scopes, keep_private, read_back, with_private
+
+
+def borrow(
+    db: sqlite3.Connection,
+    entry: Entry,
+    *,
+    scope: str | Sequence[str],
+    at: str,
+    frm: str,
+    realm: Realm | None = None,
+) -> bool:
+    """Keep one verified entry of another's log under the scope it was pulled by.
+
+    Returns whether the node did not hold it before, so that it has to be followed.
+    """
+    known = db.execute(
+        "SELECT 1 FROM entry WHERE hash = :h UNION ALL SELECT 1 FROM borrowed WHERE hash = :h",
+        {"h": entry.hash},
+    ).fetchone()
+    if known is None:
+        db.execute(
+            "INSERT INTO borrowed VALUES (?, ?, ?, ?, ?, ?, ?)",
+            (entry.log, entry.seq, entry.hash, entry.body, entry.sig, at, frm),
+        )
+        read_back(db, "borrowed", entry, realm)
+    keep_private(db, entry)
+    index_scopes(db, entry, [scope] if isinstance(scope, str) else scope)
+    return known is None
+
+
+def borrowed_of(db: sqlite3.Connection, log: str, after: int, most: int) -> list[Entry]:
+    """Return the borrowed entries of one log past a place, in order, private parts attached."""
+    rows = db.execute(
+        f"SELECT {ROW} FROM borrowed WHERE log = ? AND seq > ? ORDER BY seq, hash LIMIT ?",
+        (log, after, most),
+    ).fetchall()
+    return [with_private(db, entry_of(row)) for row in rows]
+
+
+def set_cursor(db: sqlite3.Connection, scope: str, log: str, place: Head) -> None:
+    """Remember the entry last got of one log under one scope."""
+    db.execute(
+        "INSERT INTO cursor VALUES (?, ?, ?, ?) ON CONFLICT (scope, log) "
+        "DO UPDATE SET seq = excluded.seq, hash = excluded.hash",
+        (scope, log, place.seq, place.hash),
+    )
+
+
+def cursors(db: sqlite3.Connection) -> dict[str, dict[str, Head]]:
+    """Return by scope and log the entry last got."""
+    found: dict[str, dict[str, Head]] = {}
+    for scope, log, seq, hash_ in db.execute("SELECT scope, log, seq, hash FROM cursor"):
+        found.setdefault(scope, {})[log] = Head(seq, bytes(hash_))
+    return found
+
+
+def drop_cursors(db: sqlite3.Connection, log: str) -> None:
+    """Forget how far one log was got, so that it is pulled again from its beginning."""
+    db.execute("DELETE FROM cursor WHERE log = ?", (log,))
+
+
+def drop_scope(db: sqlite3.Connection, scope: str) -> None:
+    """Give back what was borrowed by one scope and by no other, with its cursors."""
+    db.execute("DELETE FROM cursor WHERE scope = ?", (scope,))
+    db.execute(
+        "DELETE FROM entry_scope WHERE scope = ? AND hash IN (SELECT hash FROM borrowed)",
+        (scope,),
+    )
+    db.execute("DELETE FROM borrowed WHERE hash NOT IN (SELECT hash FROM entry_scope)")
+
+
+def scoped(db: sqlite3.Connection, scope: str, after: Mapping[str, Head], most: int) -> list[Entry]:
+    """Return what one scope holds past the cursors, by (log, seq), at most so many.
+
+    A log without a cursor starts at its beginning.
+    """
+    found: list[Entry] = []
+    for log in _logs_of_scope(db, scope):
+        start = after[log].seq if log in after else 0
+        rows = db.execute(
+            "SELECT hash FROM entry_scope WHERE scope = ? AND log = ? AND seq > ? "
+            "ORDER BY seq, hash LIMIT ?",
+            (scope, log, start, most - len(found)),
+        ).fetchall()
+        for (hash_,) in rows:
+            entry = find(db, hash_)
+            if entry is not None:
+                found.append(entry)
+        if len(found) >= most:
+            break
+    return found
+
+
+def _logs_of_scope(db: sqlite3.Connection, scope: str) -> Iterator[str]:
+    log = ""
+    while True:
+        row = db.execute(
+            "SELECT MIN(log) FROM entry_scope WHERE scope = ? AND log > ?", (scope, log)
+        ).fetchone()
+        if row[0] is None:
+            return
+        log = row[0]
+        yield log
+
+
+def acknowledged(db: sqlite3.Connection, log: str) -> Acknowledgement | None:
+    """Return central's last verified acknowledgement for a log, or None."""
+    row = db.execute(
+        "SELECT at, hash, key, log, seq, sig FROM acknowledgement WHERE log = ?", (log,)
+    ).fetchone()
+    return None if row is None else Acknowledgement(*row)
+
+
+def keep_acknowledgement(db: sqlite3.Connection, given: Acknowledgement) -> None:
+    """Keep a verified acknowledgement in place of the log's last one."""
+    db.execute(
+        "INSERT INTO acknowledgement (log, seq, hash, at, key, sig) VALUES (?, ?, ?, ?, ?, ?) "
+        "ON CONFLICT (log) DO UPDATE SET seq = excluded.seq, hash = excluded.hash, "
+        "at = excluded.at, key = excluded.key, sig = excluded.sig",
+        (given.log, given.seq, given.hash, given.at, given.key, given.sig),
+    )
+
+
+def drop_acknowledgement(db: sqlite3.Connection, log: str) -> None:
+    """Take "received" back to "waiting": central no longer holds what it acknowledged."""
+    db.execute("DELETE FROM acknowledgement WHERE log = ?", (log,))
