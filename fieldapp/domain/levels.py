@@ -19,7 +19,8 @@ UG_PER_L = {
     "mg/l": Decimal(1000),
 }
 
-_NUMBER = re.compile(r"(\d+(?:[.,]\d+)?|\.\d+)(?:[eE]([+-]?\d{1,2}))?", re.ASCII)
+# So few digits that Decimal's 28 hold every product exactly; no laboratory writes more.
+_NUMBER = re.compile(r"(\d{1,12}(?:[.,]\d{1,12})?|\.\d{1,12})(?:[eE]([+-]?\d{1,2}))?", re.ASCII)
 # 1,234 is a thousand or one and a bit; 0,005 and 1234,567 can only be decimal commas.
 _THOUSANDS = re.compile(r"[1-9]\d{0,2}(,\d{3})+(\.\d+)?", re.ASCII)
 _NOT_DETECTED = frozenset({"nd", "n.d."})

@@ -1,0 +1,1 @@
+"""The rules of the trade, checked without clock, web or database."""
