@@ -42,13 +42,15 @@ def _catalogue() -> _gettext.NullTranslations:
     )
 
 
-def N_(text: str) -> str:  # noqa: N802 - the name gettext's own tools look for
+def N_(text: str) -> str:
     """Mark a text for translation without translating it here."""
     return text
 
 
 RULES: dict[str, str] = {
-    "rule-broken": N_("This cannot be recorded as it is. Go back and look at the step that is due."),
+    "rule-broken": N_(
+        "This cannot be recorded as it is. Go back and look at the step that is due."
+    ),
     "not-due": N_("That step is not due yet. The step that is due now is shown."),
     "step-over": N_("That was recorded already at {at}. The present step is shown."),
     "unknown": N_("This device does not know {what} {name}. Send and fetch, then try again."),

@@ -5,8 +5,9 @@ import sqlite3
 from collections.abc import Iterable, Iterator
 from typing import Protocol
 
-from fieldapp.projections.facts import hash_name, take
-from fieldapp.projections.summaries import refresh
+from fieldapp.projections.facts import hash_name
+from fieldapp.projections.facts import take as take
+from fieldapp.projections.summaries import refresh as refresh
 from fieldapp.projections.tables import VERSION as VERSION
 from fieldapp.projections.tables import drop_tables, make_tables
 

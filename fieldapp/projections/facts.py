@@ -15,6 +15,7 @@ from fieldapp.projections.tables import put
 _COLUMNS = (
     "f.hash, f.kind, f.log, f.seq, f.at, f.off, f.mono, f.boot, f.by, f.act, f.replaces, f.data"
 )
+_HIDDEN = " LEFT JOIN private v ON v.h = f.priv"
 LIVING = "NOT EXISTS (SELECT 1 FROM p_gone g WHERE g.hash = f.hash)"
 
 
@@ -59,7 +60,7 @@ def _add(
         "at": body["at"], "off": body["off"], "mono": body["mono"], "boot": body["boot"],
         "by": body["by"], "act": body["id"], "replaces": replaces,
         "data": json.dumps(given.data(), ensure_ascii=False, separators=(",", ":")),
-        "priv": (body.get("priv") or {}).get("h", ""),
+        "priv": _unnamed((body.get("priv") or {}).get("h", "")),
     }  # fmt: skip
     put(db, "p_fact", row)
     db.executemany(
@@ -95,8 +96,9 @@ def about(
 ) -> list[Recorded]:
     """Return what is recorded about a subject, living entries only unless ``gone``."""
     sql = (
-        f"SELECT {_COLUMNS}{', v.p' if with_private else ''} FROM p_about a JOIN p_fact f USING (hash)"
-        f"{' LEFT JOIN private v ON v.h = f.priv' if with_private else ''} WHERE a.subject = ?"
+        f"SELECT {_COLUMNS}{', v.p' if with_private else ''}"
+        f" FROM p_about a JOIN p_fact f USING (hash){_HIDDEN if with_private else ''}"
+        " WHERE a.subject = ?"
     )
     given: list[Any] = [subject]
     if kinds:
@@ -111,7 +113,7 @@ def one(db: sqlite3.Connection, name: str, *, with_private: bool = False) -> Rec
     """Return the fact of that entry, gone or not."""
     row = db.execute(
         f"SELECT {_COLUMNS}{', v.p' if with_private else ''} FROM p_fact f"
-        f"{' LEFT JOIN private v ON v.h = f.priv' if with_private else ''} WHERE f.hash = ?",
+        f"{_HIDDEN if with_private else ''} WHERE f.hash = ?",
         (name,),
     ).fetchone()
     return recorded(row) if row else None
@@ -133,8 +135,8 @@ def reveal(private: bytes) -> dict[str, Any]:
     return {key: value for key, value in json.loads(private).items() if key != "salt"}
 
 
-def private_of(db: sqlite3.Connection, priv: str, fact_class: type[Fact]) -> dict[str, str]:
-    """Return the private fields under that hash as text, empty where this node may not hold them."""
+def private_of(db: sqlite3.Connection, priv: bytes, fact_class: type[Fact]) -> dict[str, str]:
+    """Return the private fields under that hash as text, empty where this node holds none."""
     row = db.execute("SELECT p FROM private WHERE h = ?", (priv,)).fetchone() if priv else None
     held = reveal(row[0]) if row else {}
     return {name: str(held.get(name, "")) for name in sorted(private_fields(fact_class))}
@@ -143,6 +145,10 @@ def private_of(db: sqlite3.Connection, priv: str, fact_class: type[Fact]) -> dic
 def hash_name(digest: bytes) -> str:
     """Return an entry's hash as the text by which references and pages name it."""
     return base64.urlsafe_b64encode(digest).rstrip(b"=").decode()
+
+
+def _unnamed(name: str) -> bytes:
+    return base64.urlsafe_b64decode(name + "=" * (-len(name) % 4))
 
 
 def living(entries: Iterable[Recorded], kind: str) -> list[Recorded]:

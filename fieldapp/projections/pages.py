@@ -14,12 +14,13 @@ from fieldapp.projections import facts, summaries
 
 Row = Mapping[str, Any]
 _JSON = (
-    "months", "protocols", "roles", "places", "analyse", "deviations", "results", "says", "evidence",
+    "months", "protocols", "roles", "places", "analyse", "deviations", "results", "says",
+    "evidence",
 )  # fmt: skip
 
 
 class Pages:
-    """Read access to one connection's page tables. Inside ``store.act`` it sees that transaction."""
+    """Reads one connection's page tables; inside ``store.act`` it sees that transaction."""
 
     def __init__(self, db: sqlite3.Connection) -> None:
         self.db = db
@@ -70,7 +71,7 @@ class Pages:
         """Return one person with the name."""
         return next((row for row in self.people() if row["person"] == person), None)
 
-    def private(self, priv: str, fact_class: type[Any]) -> dict[str, str]:
+    def private(self, priv: bytes, fact_class: type[Any]) -> dict[str, str]:
         """Return the private fields under a hash."""
         return facts.private_of(self.db, priv, fact_class)
 
@@ -81,7 +82,8 @@ class Pages:
         return self.rows(
             "SELECT v.*, s.tier, s.line, s.plumbing, s.dropped FROM p_visit v LEFT JOIN p_site s"
             " ON s.site = v.site AND s.round = v.round"
-            " WHERE ? IN ('', v.route) AND ? IN ('', v.round) ORDER BY v.route, v.position, v.visit",
+            " WHERE ? IN ('', v.route) AND ? IN ('', v.round)"
+            " ORDER BY v.route, v.position, v.visit",
             (route, round_id),
         )
 

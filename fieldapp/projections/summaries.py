@@ -203,12 +203,16 @@ def _visit_row(
         "stand_longest_s": int(stand.longest.total_seconds()) if stand else None,
         "stand_verdict": told.stand_verdict if told else "",
         "earliest_draw": text(told.earliest_draw) if told and told.earliest_draw else "",
-        "deviations": json.dumps([asdict(d) for d in told.deviations], default=str) if told else "[]",
+        "deviations": _deviations(told),
         "outcome": str(getattr(closed[-1].fact, "outcome", "")) if closed else "",
         "opened_at": text(opened[0].done_at) if opened else "",
         "closed_at": text(closed[-1].done_at) if closed else "",
         "touched": int(bool(acts)), "log": acts[-1].log if acts else "",
     }  # fmt: skip
+
+
+def _deviations(told: Standing | None) -> str:
+    return json.dumps([asdict(d) for d in told.deviations] if told else [], default=str)
 
 
 def tell_bottle(db: sqlite3.Connection, bottle: str) -> None:
@@ -310,9 +314,9 @@ def _due(db: sqlite3.Connection, round_id: str) -> timedelta | None:
     return parse_duration(row[0]) if row and row[0] else None
 
 
-def _priv(db: sqlite3.Connection, name: str) -> str:
+def _priv(db: sqlite3.Connection, name: str) -> bytes:
     row = db.execute("SELECT priv FROM p_fact WHERE hash = ?", (name,)).fetchone()
-    return str(row[0]) if row else ""
+    return bytes(row[0]) if row else b""
 
 
 def text(at: datetime) -> str:

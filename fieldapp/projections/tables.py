@@ -1,8 +1,9 @@
-"""The page tables. All begin with ``p_``, hold nothing that the ledger does not, and can be rebuilt.
+"""The page tables. All begin with ``p_`` and hold nothing that the ledger does not.
 
 ``p_fact`` is the fact table of every kind: one row an entry, only growing. ``p_about`` indexes it
 by subject, ``p_gone`` lists what was replaced or withdrawn. The others hold one summary row a
-subject, recomputed from its facts in the transaction that wrote them, never patched.
+subject, recomputed from its facts in the transaction that wrote them, never patched. All can be
+dropped and rebuilt.
 """
 
 import sqlite3
@@ -12,7 +13,7 @@ from sqlite_utils import Database
 VERSION = 1
 """Raise it when a summary changes; a node with older page tables rebuilds them at start."""
 
-TEXT, INT = str, int
+TEXT, INT, BLOB = str, int, bytes
 
 TABLES: dict[str, tuple[dict[str, type], str | tuple[str, ...]]] = {
     "p_fact": (
@@ -29,7 +30,7 @@ TABLES: dict[str, tuple[dict[str, type], str | tuple[str, ...]]] = {
             "act": TEXT,
             "replaces": TEXT,
             "data": TEXT,
-            "priv": TEXT,
+            "priv": BLOB,
         },
         "hash",
     ),
@@ -56,7 +57,7 @@ TABLES: dict[str, tuple[dict[str, type], str | tuple[str, ...]]] = {
         "round",
     ),
     "p_protocol": ({"sha256": TEXT, "protocol": TEXT, "toml": TEXT}, "sha256"),
-    "p_person": ({"person": TEXT, "roles": TEXT, "hash": TEXT, "priv": TEXT}, "person"),
+    "p_person": ({"person": TEXT, "roles": TEXT, "hash": TEXT, "priv": BLOB}, "person"),
     "p_device": (
         {
             "dev": TEXT,
@@ -83,7 +84,7 @@ TABLES: dict[str, tuple[dict[str, type], str | tuple[str, ...]]] = {
             "plumbing": TEXT,
             "dropped": INT,
             "hash": TEXT,
-            "priv": TEXT,
+            "priv": BLOB,
         },
         ("round", "site"),
     ),

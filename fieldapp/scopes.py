@@ -1,0 +1,48 @@
+"""By which words an entry is pulled: the store sets them when it signs (design 5)."""
+
+from fieldapp.domain.facts import ALL, CENTRAL, ROUTE_LAB, EntryCorrected, EntryWithdrawn, Fact
+from fieldapp.projections.pages import Pages
+
+
+def scope_of(pages: Pages, given: Fact) -> list[str]:
+    """Return the scope words of a fact about to be signed.
+
+    A correction or withdrawal goes where the entry it answers went.
+    """
+    if given.reach == ALL:
+        return ["all"]
+    if given.reach == CENTRAL:
+        return []
+    if isinstance(given, EntryCorrected | EntryWithdrawn):
+        answered = pages.fact(given.of)
+        if answered is None:
+            return ["all"]
+        return scope_of(pages, answered.fact)
+    route = _route_of(pages, given)
+    words = [f"route:{route}"] if route else []
+    if given.reach == ROUTE_LAB and (laboratory := _laboratory_of(pages, given, route)):
+        words.append(f"lab:{laboratory}")
+    return words
+
+
+def _route_of(pages: Pages, given: Fact) -> str:
+    if route := getattr(given, "route", ""):
+        return str(route)
+    if visit := getattr(given, "visit", ""):
+        row = pages.visit(str(visit))
+        return str(row["route"]) if row else ""
+    if bottle := getattr(given, "bottle", ""):
+        row = pages.bottle(str(bottle))
+        return str(row["route"]) if row else ""
+    return ""
+
+
+def _laboratory_of(pages: Pages, given: Fact, route: str) -> str:
+    if laboratory := getattr(given, "laboratory", ""):
+        return str(laboratory)
+    round_id = str(getattr(given, "round", ""))
+    if not round_id and route:
+        row = pages.route(route)
+        round_id = str(row["round"]) if row else ""
+    row = pages.round(round_id) if round_id else None
+    return str(row["laboratory"]) if row else ""
