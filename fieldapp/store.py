@@ -11,12 +11,13 @@ import json
 import sqlite3
 import threading
 from collections.abc import Callable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 from fieldapp import identity, projections
 from fieldapp.clock import Clock
+from fieldapp.domain.decision import Decision
 from fieldapp.domain.errors import RuleBroken
 from fieldapp.domain.facts import KINDS, Fact, LogOpened
 from fieldapp.domain.recorded import Reading
@@ -56,14 +57,6 @@ class ActDiffers(RuleBroken):
 
 class RecordStopped(SyncError):
     """The disk failed under a commit; nothing more is written until the node starts again."""
-
-
-@dataclass(frozen=True)
-class Decision:
-    """What a press becomes: facts, and the answer that a repeated press gets again."""
-
-    facts: Sequence[Fact]
-    answer: Mapping[str, Any] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
