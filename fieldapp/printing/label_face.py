@@ -2,11 +2,13 @@
 
 All lengths are points (1/72 inch), measured from the label's lower left corner. Black only, for
 thermal paper. Whatever the words, nothing leaves the label: text grows or shrinks as one, then
-the least needed lines go, then a line is cut with an ellipsis. The code is never cut.
+the least needed rows go, then shorter wordings are taken, and at the very last a line is cut with
+an ellipsis. The code is never cut.
 """
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from functools import partial
 from typing import TYPE_CHECKING
 
 from fieldapp.printing import qr
@@ -25,43 +27,50 @@ PADDING = 1.4 * POINTS_A_MM
 QR_WIDE_LABEL = 48 * POINTS_A_MM
 QR_LEAST = 14.5 * POINTS_A_MM
 QR_LEAST_WIDE = 14.1 * POINTS_A_MM * qr.OUTER_MODULES / qr.SIDE_MODULES
-QR_MOST = 28 * POINTS_A_MM
+QR_MOST = 32 * POINTS_A_MM
 QR_SHARE = 0.35
 
 CODE_SIZE, CAPTION_SIZE, CAPTION_LEAST = 15.0, 5.0, 4.2
 LEADING, ASCENT = 1.16, 0.93
-PEN_WANTED, PEN_LEAST, PEN_MOST = 14.0, 8.0, 30.0
+PEN_WANTED, PEN_LEAST, PEN_TIGHT, PEN_MOST = 14.0, 8.0, 5.0, 30.0
 PEN_GAP = 4.0
 LINE_WIDTH = 0.4
+# Keeps the stroke of a ruled line out of the quiet zone.
+HAIR = 1.0
 
 GROWN = (1.8, 1.6, 1.4, 1.25, 1.1)
 SHRUNK = (1.0, 0.92, 0.85)
 LAST_RESORT = (0.85, 0.75, 0.66)
+SLIGHTLY_SMALLER = (1.0, 0.94, 0.88)
 
 
 @dataclass(frozen=True)
 class Row:
-    """One thing to say: its wordings from the fullest to the shortest, and its size in points."""
+    """One thing to say: its wordings from the fullest to the shortest, and its size in points.
+
+    ``below`` rows stand under the pen's lines, the others above them.
+    """
 
     wordings: tuple[str, ...]
     size: float
     font: str = PLAIN
+    below: bool = False
 
 
 @dataclass(frozen=True)
 class Face:
-    """What a label says. ``optional`` rows stand above the pen's lines, the last goes first.
+    """What a label says. Of ``optional`` rows the last goes first where room is short.
 
-    ``pens`` are the captions of the ruled lines, row by row; ``foot`` stands below them.
+    ``notes`` go after all of these, at the very last. ``pens`` are the captions of the ruled
+    lines, row by row.
     """
 
     code: str
     grouped: str
     rows: tuple[Row, ...]
+    notes: tuple[Row, ...]
+    optional: tuple[Row, ...]
     pens: tuple[tuple[str, ...], ...]
-    optional: tuple[Row, ...] = ()
-    foot: tuple[Row, ...] = ()
-    optional_foot: tuple[Row, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -75,6 +84,23 @@ class Line:
     @property
     def height(self) -> float:
         return self.size * LEADING
+
+    @property
+    def width(self) -> float:
+        return _text_width(self.text, self.font, self.size)
+
+
+@dataclass(frozen=True)
+class Attempt:
+    """How a face is tried: its scale, which rows stay, how a row may be broken or shortened."""
+
+    scale: float
+    kept: int
+    most_lines: int
+    least_pen: float = PEN_WANTED
+    shorten: bool = False
+    cut: bool = False
+    notes: bool = True
 
 
 @dataclass(frozen=True)
@@ -102,7 +128,8 @@ def _split(width: float, height: float) -> tuple[float, tuple[float, float, floa
         side = min(max(least, 0.4 * height), width, QR_MOST)
         return side, (PADDING, PADDING, width - 2 * PADDING, height - side - PADDING)
     side = min(max(least, QR_SHARE * width), height, QR_MOST)
-    return side, (side, PADDING, width - side - PADDING, height - 2 * PADDING)
+    left = side + HAIR
+    return side, (left, PADDING, width - left - PADDING, height - 2 * PADDING)
 
 
 def _is_upright(width: float, height: float) -> bool:
@@ -126,55 +153,39 @@ def _draw_qr(canvas: "Canvas", code: str, left: float, bottom: float, side: floa
 
 
 def _arrange(face: Face, width: float, height: float) -> Arrangement:
-    """Return the largest arrangement with all rows; else fewer rows; else smaller and cut."""
-    rest = len(face.optional) + len(face.optional_foot)
-    for scale in GROWN:
-        found = _fit(face, width, height, scale, rest, most_lines=1)
-        if found:
-            return found
-    for kept in range(rest, -1, -1):
-        for scale in SHRUNK:
-            found = _fit(face, width, height, scale, kept, most_lines=2)
-            if found:
-                return found
-    for scale, most_lines in _desperate():
-        found = _fit(face, width, height, scale, 0, most_lines, least_pen=PEN_LEAST, cut=True)
+    """Return the largest arrangement of the face that fits a column of that size."""
+    for attempt in _attempts(len(face.optional)):
+        found = _fit(face, width, height, attempt)
         if found:
             return found
     raise AssertionError(f"a label column of {width:.0f} x {height:.0f} points holds nothing")
 
 
-def _desperate() -> Iterator[tuple[float, int]]:
+def _attempts(optional: int) -> Iterator[Attempt]:
+    for scale in GROWN:
+        yield Attempt(scale, optional, most_lines=1)
+    for kept in range(optional, -1, -1):
+        for scale in SHRUNK:
+            yield Attempt(scale, kept, most_lines=2)
+    last = partial(Attempt, kept=0, least_pen=PEN_LEAST, shorten=True)
     for most_lines in (2, 1):
         for scale in LAST_RESORT:
-            yield scale, most_lines
+            yield last(scale, most_lines=most_lines)
+    for notes, least_pen in ((True, PEN_LEAST), (False, PEN_LEAST), (False, PEN_TIGHT)):
+        yield last(LAST_RESORT[-1], most_lines=1, least_pen=least_pen, notes=notes, cut=True)
 
 
-def _fit(
-    face: Face,
-    width: float,
-    height: float,
-    scale: float,
-    kept: int,
-    most_lines: int,
-    least_pen: float = PEN_WANTED,
-    cut: bool = False,
-) -> Arrangement | None:
-    """Return the arrangement at this scale with that many optional rows kept, or none."""
-    optional = face.optional[:kept]
-    optional_foot = face.optional_foot[: max(0, kept - len(face.optional))]
-    above = [_code_line(face.grouped, width, scale)]
-    below: list[Line] = []
-    for rows, lines in ((face.rows + optional, above), (face.foot + optional_foot, below)):
-        for row in rows:
-            set_lines = _set_row(row, width, scale, most_lines, cut)
-            if set_lines is None:
-                return None
-            lines.extend(set_lines)
-    caption = max(CAPTION_LEAST, CAPTION_SIZE * scale)
+def _fit(face: Face, width: float, height: float, attempt: Attempt) -> Arrangement | None:
+    rows = face.rows + face.notes * attempt.notes + face.optional[: attempt.kept]
+    above = _set_rows([row for row in rows if not row.below], width, attempt)
+    below = _set_rows([row for row in rows if row.below], width, attempt)
+    if above is None or below is None:
+        return None
+    above = [_code_line(face.grouped, width, attempt.scale), *above]
+    caption = max(CAPTION_LEAST, CAPTION_SIZE * attempt.scale)
     used = sum(line.height for line in above + below) + len(face.pens) * caption * LEADING
     pen_height = (height - used) / len(face.pens)
-    if pen_height < least_pen * max(1.0, scale):
+    if pen_height < attempt.least_pen * max(1.0, attempt.scale):
         return None
     return Arrangement(tuple(above), min(pen_height, PEN_MOST), caption, tuple(below))
 
@@ -184,23 +195,35 @@ def _code_line(grouped: str, width: float, scale: float) -> Line:
     return Line(grouped, BOLD, min(CODE_SIZE * scale, widest))
 
 
-def _set_row(row: Row, width: float, scale: float, most_lines: int, cut: bool) -> list[Line] | None:
-    """Return the lines of a row: on one line if a little smaller will do, else broken."""
-    size = row.size * scale
-    for wording in row.wordings:
-        for slightly in (1.0, 0.94, 0.88):
-            if _text_width(wording, row.font, size * slightly) <= width:
-                return [Line(wording, row.font, size * slightly)]
-        lines = _broken(wording, row.font, size, width)
-        if len(lines) <= most_lines and all(
-            _text_width(line, row.font, size) <= width for line in lines
-        ):
-            return [Line(line, row.font, size) for line in lines]
-    if not cut:
+def _set_rows(rows: Sequence[Row], width: float, attempt: Attempt) -> list[Line] | None:
+    lines: list[Line] = []
+    for row in rows:
+        of_row = _set_row(row, width, attempt)
+        if of_row is None:
+            return None
+        lines.extend(of_row)
+    return lines
+
+
+def _set_row(row: Row, width: float, attempt: Attempt) -> list[Line] | None:
+    """Return the lines of a row, or none where no wording that may be taken fits."""
+    size = row.size * attempt.scale
+    for wording in row.wordings if attempt.shorten else row.wordings[:1]:
+        lines = _set_wording(wording, row.font, size, width)
+        if len(lines) <= attempt.most_lines and all(line.width <= width for line in lines):
+            return lines
+    if not attempt.cut:
         return None
-    lines = _broken(row.wordings[-1], row.font, size, width)
-    kept = [*lines[: most_lines - 1], " ".join(lines[most_lines - 1 :])]
-    return [Line(_elided(line, row.font, size, width), row.font, size) for line in kept]
+    return [Line(_elided(row.wordings[-1], row.font, size, width), row.font, size)]
+
+
+def _set_wording(wording: str, font: str, size: float, width: float) -> list[Line]:
+    """Return the wording on one line if a little smaller will do, else broken."""
+    for slightly in SLIGHTLY_SMALLER:
+        line = Line(wording, font, size * slightly)
+        if line.width <= width:
+            return [line]
+    return [Line(text, font, size) for text in _broken(wording, font, size, width)]
 
 
 def _broken(text: str, font: str, size: float, width: float) -> list[str]:

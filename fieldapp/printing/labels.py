@@ -22,6 +22,7 @@ from fieldapp.printing.sheets import (
     parse_sheet,
 )
 from fieldapp.words import gettext as _
+from fieldapp.words import ngettext
 
 if TYPE_CHECKING:
     from reportlab.pdfgen.canvas import Canvas
@@ -45,6 +46,9 @@ Progress = Callable[[int, int], None]
 _FONT_ENCODING = "cp1252"
 _NO_BREAK = "\u00a0"
 _THIN_SPACES = str.maketrans("\u2009\u202f\t\r\n", _NO_BREAK * 2 + "   ")
+
+# How much of a site's code is shown where all of it finds no room, in characters.
+SITE_LENGTHS = (24, 16, 10, 6)
 
 # Cutting marks stand this far from the outermost labels and are this long.
 _MARK_GAP_MM, _MARK_MM = 1.0, 3.0
@@ -157,26 +161,40 @@ def _point(x_mm: float, y_mm: float, page_height_mm: float) -> tuple[float, floa
 def _face(label: Label) -> Face:
     """Return the words of a label, each in the order of how much it is needed."""
     code = codes.normalise(label.code)
-    purpose, route = _printable(label.purpose_words), _route(label)
-    optional = [_joined(purpose, route), purpose] if purpose else [route]
-    foot = (Row((_printable(_caution()),), 6.0, BOLD),) if label.preservative == "acid" else ()
-    care = _printable(label.note) or _printable(_("Do not rinse. Cold water only."))
-    cap = _printable(_("On the bottle, not on the cap."))
+    rows = [Row(_first_line(label), 8.0, BOLD), Row(tuple(_second_line(label)), 7.5)]
+    if label.preservative == "acid":
+        rows.append(Row(_caution(), 6.0, BOLD, below=True))
+    note = _printable(label.note)
     return Face(
         code=code,
         grouped=codes.grouped(code),
-        rows=(Row((_first_line(label),), 8.0, BOLD), Row(tuple(_second_lines(label)), 7.5)),
+        rows=tuple(rows),
+        notes=(Row((note,), 5.6, below=True),) if note else (),
+        optional=tuple(_optional(label)),
         pens=_pens(label),
-        optional=(Row(tuple(optional), 6.0),) if any(optional) else (),
-        foot=foot,
-        optional_foot=(Row((care,), 5.6), Row((cap,), 5.6)),
     )
 
 
-def _caution() -> str:
-    # Never rinse; a preserved bottle that ran over is discarded; treat what is in it as acid.
-    # Source: laboratories' bottle instructions, read; "burns" from memory, check.
-    return _("Acid inside, it burns. Do not overfill.")
+def _optional(label: Label) -> Iterator[Row]:
+    if not label.note:
+        yield Row((_care(label),), 5.6, below=True)
+    aside = _joined(_printable(label.purpose_words), _route(label))
+    if aside:
+        yield Row((aside,), 6.0)
+    yield Row((_printable(_("On the bottle, not on the cap.")),), 5.6, below=True)
+
+
+def _caution() -> tuple[str, ...]:
+    # A bottle is never rinsed; one with acid that ran over is discarded; what is in it is acid.
+    # Source: laboratories' bottle instructions (read); that it burns: from memory, check.
+    full = _("Acid inside, it burns. Do not rinse or overfill.")
+    return _printable(full), _printable(_("Acid inside. Do not rinse."))
+
+
+def _care(label: Label) -> str:
+    if label.preservative == "acid":
+        return _printable(_("Cold water only."))
+    return _printable(_("Do not rinse. Cold water only."))
 
 
 def _pens(label: Label) -> tuple[tuple[str, ...], ...]:
@@ -185,25 +203,40 @@ def _pens(label: Label) -> tuple[tuple[str, ...], ...]:
     return (when,) if label.site else (where, when)
 
 
-def _first_line(label: Label) -> str:
+def _first_line(label: Label) -> tuple[str, ...]:
+    volume = _volume(label.volume_ml)
     if not label.site:
-        return _joined(_printable(_("Spare")), _volume(label.volume_ml))
-    draw = label.draw_words
-    if not draw and label.draw:
-        draw = _("Draw {number}").format(number=label.draw)
-    return _joined(_printable(draw), _volume(label.volume_ml)) or _NO_BREAK
+        return (_joined(_printable(_("Spare")), volume),)
+    number = _printable(_("Draw {number}").format(number=label.draw)) if label.draw else ""
+    words = _printable(label.draw_words) or number
+    return _joined(words, volume), _joined(_bound(number or words), volume)
 
 
-def _second_lines(label: Label) -> Iterator[str]:
-    """Yield site, analyses and preservative, naming fewer and fewer of the analyses."""
-    site = _printable(_("Site {site}")).format(site=_site(label)) if label.site else ""
-    names = [_printable(name) for name in label.analyse]
+def _second_line(label: Label) -> Iterator[str]:
+    """Yield site, analyses and preservative; then with fewer analyses; then with less of the site.
+
+    The preservative is never left out.
+    """
+    site, end = _site(label), _preservative(label)
+    names = [_bound(_printable(name)) for name in label.analyse]
     if not names:
-        nothing = _printable(_("not analysed")) if label.site else ""
-        yield _joined(site, nothing, _preservative(label))
+        names = [_bound(_printable(_("not analysed")))] if site else [""]
     for count in range(len(names), 0, -1):
-        more = f" +{len(names) - count}" if count < len(names) else ""
-        yield _joined(site, ", ".join(names[:count]) + more, _preservative(label))
+        yield _joined(_site_words(site), _counted(names, count), end)
+    for length in SITE_LENGTHS:
+        short = site[:length] + "…" if len(site) > length else site
+        yield _joined(_site_words(short), _counted(names, 1), end)
+    many = ngettext("{count} analysis", "{count} analyses", len(names)).format(count=len(names))
+    yield _joined(_site_words(short), _bound(_printable(many)), end)
+
+
+def _counted(names: list[str], count: int) -> str:
+    more = f"{_NO_BREAK}+{len(names) - count}" if count < len(names) else ""
+    return ", ".join(names[:count]) + more
+
+
+def _site_words(site: str) -> str:
+    return _bound(_printable(_("Site {site}").format(site=site))) if site else ""
 
 
 def _preservative(label: Label) -> str:
@@ -211,7 +244,7 @@ def _preservative(label: Label) -> str:
     if label.preservative not in known:
         text = _("The preservative of bottle {code} is “{name}”. It may be none or acid.")
         raise BadLabel(text.format(code=label.code, name=label.preservative))
-    return _printable(known[label.preservative])
+    return _bound(_printable(known[label.preservative]))
 
 
 def _site(label: Label) -> str:
@@ -227,7 +260,12 @@ def _route(label: Label) -> str:
 
 
 def _volume(volume_ml: int) -> str:
-    return f"{volume_ml:,} mL".replace(",", _NO_BREAK).replace(" ", _NO_BREAK) if volume_ml else ""
+    return _bound(f"{volume_ml:,} mL".replace(",", " ")) if volume_ml else ""
+
+
+def _bound(text: str) -> str:
+    """Return the text with its blanks made unbreakable: *no acid* may not end as *no*."""
+    return text.replace(" ", _NO_BREAK)
 
 
 def _joined(*pieces: str) -> str:

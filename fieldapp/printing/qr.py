@@ -28,7 +28,8 @@ def modules(code: str) -> list[list[bool]]:
     from qrcode.constants import ERROR_CORRECT_M
 
     symbol = QRCode(version=VERSION, error_correction=ERROR_CORRECT_M, border=0, mask_pattern=MASK)
-    symbol.add_data(util.QRData(codes.normalise(code), mode=util.MODE_ALPHA_NUM))
+    text = codes.normalise(code).encode("ascii")
+    symbol.add_data(util.QRData(text, mode=util.MODE_ALPHA_NUM))
     symbol.make(fit=False)
     return [[bool(module) for module in row] for row in symbol.get_matrix()]
 
