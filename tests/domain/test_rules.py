@@ -162,6 +162,7 @@ def test_lead_and_copper_are_reckoned_apart():
         ({"purpose": "duplicate", "kind": "first-draw"}, "duplicate"),
         ({"purpose": "compliance", "kind": "duplicate"}, "duplicate"),
         ({"draw": 2, "kind": "sequential"}, "draw-not-counted"),
+        ({"draw": 2, "kind": "first-draw"}, "draw-not-counted"),
         ({"draw": 5, "kind": "sequential"}, "draw-not-counted"),
         ({"kind": "random-daytime"}, "draw-not-counted"),
         ({"kind": "flushed"}, "draw-not-counted"),
@@ -254,6 +255,13 @@ def test_half_a_pair_leaves_its_site_out_and_nothing_stands_in(lost):
 def test_a_first_litre_alone_is_half_a_pair_at_a_lead_line():
     answer = lead("us-2024", litre("S-1", "18", line="lead"))
     assert reasons(answer) == {"S-1-1": "pair-incomplete"}
+
+
+def test_the_litres_between_a_pair_do_not_count_even_when_analysed():
+    third = litre("S-1", "90", draw=3, kind="sequential", line="lead")
+    answer = lead("us-2024", third, *pair("S-1", "3", "8"))
+    assert (answer.n, answer.value) == (1, Decimal(8))
+    assert reasons(answer)["S-1-3"] == "draw-not-counted"
 
 
 def test_an_invalidated_half_takes_its_pair_with_it():
