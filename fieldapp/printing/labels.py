@@ -226,8 +226,11 @@ def _second_line(label: Label) -> Iterator[str]:
     for length in SITE_LENGTHS:
         short = site[:length] + "…" if len(site) > length else site
         yield _joined(_site_words(short), _counted(names, 1), end)
+    if not label.analyse:
+        return
     many = ngettext("{count} analysis", "{count} analyses", len(names)).format(count=len(names))
-    yield _joined(_site_words(short), _bound(_printable(many)), end)
+    for counted in (_bound(_printable(many)), f"+{len(names)}"):
+        yield _joined(_site_words(short), counted, end)
 
 
 def _counted(names: list[str], count: int) -> str:

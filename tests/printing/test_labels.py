@@ -92,11 +92,15 @@ def crowded_spare(code: str) -> Label:
     return replace(crowded(code), site="", draw=0)
 
 
+def crowded_unanalysed(code: str) -> Label:
+    return replace(crowded(code), analyse=())
+
+
 def many_long_analyses(code: str) -> Label:
     return replace(crowded(code), analyse=("a-substance-with-a-very-long-name-" * 3,) * 9)
 
 
-MAKERS = [label, spare, crowded, crowded_spare, many_long_analyses]
+MAKERS = [label, spare, crowded, crowded_spare, crowded_unanalysed, many_long_analyses]
 
 
 def printed(labels: list[Label], **paper: object) -> bytes:
@@ -234,6 +238,10 @@ def test_a_spare_leaves_site_and_draw_to_the_pen():
 
 def test_a_bottle_that_is_not_analysed_says_so():
     assert "Site Q-0412 · not analysed" in text_of(printed([label(a_code(), analyse=())]))
+    for roll in ROLLS:
+        text = text_of(printed([crowded_unanalysed(a_code())], roll=roll))
+        assert "not analysed" in text
+        assert "1 analysis" not in text
 
 
 def test_no_name_and_no_address_can_get_onto_a_label():
@@ -345,7 +353,7 @@ def test_a_pen_has_room_to_write():
 
 def test_a_crowded_label_still_shows_code_and_preservative():
     for roll in ROLLS:
-        for make in (crowded, crowded_spare, many_long_analyses):
+        for make in MAKERS[2:]:
             code = a_code()
             text = text_of(printed([make(code)], roll=roll))
             assert codes.grouped(code) in text
