@@ -30,7 +30,7 @@ from sync.entry import Entry, Realm, b64, compose, conceal, new_log_id, unb64, v
 from sync.errors import Refused, SyncError, Unsuitable
 from sync.folder import FolderLock, check_place, read_anchors, write_anchor
 from sync.keys import DeviceKey
-from sync.replica import Moment, Pin
+from sync.replica import Moment, Pin, Replica
 
 REALM = Realm("tapwitness")
 DATABASE = "ledger.db"
@@ -83,6 +83,8 @@ class Store:
         self._readers = threading.local()
         self._open_readers: list[sqlite3.Connection] = []
         self._stopped = ""
+        self._replica: Replica | None = None
+        self.sending = threading.Lock()  # one run of exchanges at a time
         self.enrolling: Callable[[str, bytes, str], Mapping[str, Any]] | None = None
         self._in_transaction = False
         self._touched: set[str] = set()
@@ -476,7 +478,17 @@ class Store:
             raise Refused("not-central", "This node enrols no devices. Ask for central's address.")
         return self.enrolling(dev, public_key, code)
 
+    def replica(self) -> Replica:
+        """Return this node's part in replication; its session lasts as long as the node."""
+        if self._replica is None:
+            self._replica = Replica(self)
+        return self._replica
+
     # small things a node keeps for itself
+
+    def mark_invite(self, code_hash: str, dev: str) -> None:
+        """Mark a one-time code used, in the transaction of the enrolment."""
+        self._db.execute("UPDATE invite SET used_by = ? WHERE code_hash = ?", (dev, code_hash))
 
     def get(self, name: str) -> str:
         """Return one of this node's own notes, empty where there is none."""

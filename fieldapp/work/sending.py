@@ -1,0 +1,42 @@
+"""Send and fetch: one run of exchanges with central."""
+
+import json
+from collections.abc import Callable
+from typing import Any
+
+from fieldapp.store import Store
+from sync import exchange
+from sync.errors import Refused
+from sync.http import HttpPeer
+
+
+def send_and_fetch(
+    store: Store, *, progress: Callable[[int, int], None] | None = None
+) -> dict[str, Any]:
+    """Exchange with central until nothing is left either way.
+
+    Returns:
+        ``pushed``, ``pulled``, ``waiting``, ``refused``, ``regressed``, ``carried``.
+
+    Raises:
+        Refused: this device is not enrolled anywhere.
+        NoContact: nothing trustworthy answered; everything waits.
+    """
+    pin = store.central()
+    if pin is None:
+        raise Refused("not-enrolled", "This device is enrolled nowhere. Run 'tapwitness enrol'.")
+    with store.sending:
+        peer = HttpPeer(pin.url, store.realm)
+        report = exchange.run(store.replica(), peer, progress=progress)
+        with store.transaction():
+            store.put("contact", json.dumps({"at": report.at or store.moment().at}))
+    return {
+        "pushed": report.pushed, "pulled": report.pulled, "waiting": report.waiting,
+        "refused": [str(r) for r in report.refused], "regressed": report.regressed,
+        "carried": report.carried,
+    }  # fmt: skip
+
+
+def sync_now(store: Store, *, progress: Callable[..., None]) -> dict[str, Any]:
+    """Send and fetch for a command, with its progress."""
+    return send_and_fetch(store, progress=lambda done, of: progress("sync", done, of))
