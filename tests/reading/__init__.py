@@ -1,0 +1,1 @@
+"""Files that people bring: what reads clean, and every way in which one is refused."""
