@@ -76,3 +76,16 @@ def find(db: sqlite3.Connection, hash: bytes) -> Entry | None:
         if row is not None:
             return with_private(db, entry_of(row))
     return None
+
+
+def holds(db: sqlite3.Connection, hash: bytes) -> bool:
+    """Say whether page tables follow this entry already.
+
+    The losing side of a fork is kept as evidence only, so holding it there does not count.
+    """
+    row = db.execute(
+        "SELECT 1 FROM entry WHERE hash = :h UNION ALL SELECT 1 FROM borrowed WHERE hash = :h "
+        "UNION ALL SELECT 1 FROM branch WHERE hash = :h AND stated > 0 LIMIT 1",
+        {"h": hash},
+    ).fetchone()
+    return row is not None

@@ -5,7 +5,17 @@ from collections.abc import Iterator, Mapping, Sequence
 
 from sync.acknowledgement import Acknowledgement
 from sync.entry import Entry, Realm
-from sync.rows import ROW, Head, entry_of, find, index_scopes, keep_private, read_back, with_private
+from sync.rows import (
+    ROW,
+    Head,
+    entry_of,
+    find,
+    holds,
+    index_scopes,
+    keep_private,
+    read_back,
+    with_private,
+)
 
 
 def borrow(
@@ -21,11 +31,12 @@ def borrow(
 
     Returns whether the node did not hold it before, so that it has to be followed.
     """
-    known = db.execute(
+    known = holds(db, entry.hash)
+    kept = db.execute(
         "SELECT 1 FROM entry WHERE hash = :h UNION ALL SELECT 1 FROM borrowed WHERE hash = :h",
         {"h": entry.hash},
     ).fetchone()
-    if known is None:
+    if kept is None:
         db.execute(
             "INSERT INTO borrowed VALUES (?, ?, ?, ?, ?, ?, ?)",
             (entry.log, entry.seq, entry.hash, entry.body, entry.sig, at, frm),
@@ -33,14 +44,17 @@ def borrow(
         read_back(db, "borrowed", entry, realm)
     keep_private(db, entry)
     index_scopes(db, entry, [scope] if isinstance(scope, str) else scope)
-    return known is None
+    return not known
 
 
-def borrowed_of(db: sqlite3.Connection, log: str, after: int, most: int) -> list[Entry]:
-    """Return the borrowed entries of one log past a place, in order, private parts attached."""
+def borrowed_of(
+    db: sqlite3.Connection, log: str, after: tuple[int, bytes], most: int
+) -> list[Entry]:
+    """Return the borrowed entries of one log past (seq, hash), private parts attached."""
     rows = db.execute(
-        f"SELECT {ROW} FROM borrowed WHERE log = ? AND seq > ? ORDER BY seq, hash LIMIT ?",
-        (log, after, most),
+        f"SELECT {ROW} FROM borrowed WHERE log = ? AND (seq, hash) > (?, ?) "
+        "ORDER BY seq, hash LIMIT ?",
+        (log, *after, most),
     ).fetchall()
     return [with_private(db, entry_of(row)) for row in rows]
 

@@ -1,0 +1,391 @@
+"""The asking side: says what it has, believes only the present answer, loses nothing.
+
+========================  ==========================  =====================================
+central says              that means                  this device does
+========================  ==========================  =====================================
+same hash, no more        normal, or central was      pushes what lies past central's head;
+                          restored                    takes "received" back if that fell
+same hash, more           this device was restored    fetches the rest, opens a new log
+other hash                a fork                      fetches central's history, opens a new
+                                                      log, carries its own entries over
+========================  ==========================  =====================================
+"""
+
+import sqlite3
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+from sync import ledger, wire
+from sync.acknowledgement import Acknowledgement
+from sync.adopt import adopt
+from sync.central import ODD_DATA, verified_alone
+from sync.encoding import b64
+from sync.entry import Entry
+from sync.errors import BadEntry, NoContact, Refused
+from sync.ledger import Head
+from sync.replica import Replica
+
+BEHIND = "behind"
+FORK = "fork"
+MOST_TRIES = 3  # refusals of one log that a run answers by asking again
+FEWEST_ENTRIES = 1
+
+
+@dataclass
+class Run:
+    """What one run has learned; nothing of it outlives the run."""
+
+    most: int = wire.MOST_ENTRIES
+    most_bytes: int = wire.MOST_ENTRY_BYTES
+    at_central: dict[str, Head | None] = field(default_factory=dict)
+    fetch: dict[str, Head | None] = field(default_factory=dict)  # log -> place known to be common
+    returning: dict[str, tuple[int, bytes]] = field(default_factory=dict)
+    returned: set[str] = field(default_factory=set)
+    skip: set[str] = field(default_factory=set)
+    tries: dict[str, int] = field(default_factory=dict)
+    blocked: set[str] = field(default_factory=set)
+    refused: list[dict[str, Any]] = field(default_factory=list)
+    denied: set[str] = field(default_factory=set)
+    regressed: set[str] = field(default_factory=set)
+    pushed: int = 0
+    pulled: int = 0
+    carried: int = 0
+    more: bool = False
+    sent_back: dict[str, list[Entry]] = field(default_factory=dict)
+
+
+def waiting(replica: Replica, db: sqlite3.Connection) -> int:
+    """Return how many own entries central has not acknowledged."""
+    count = 0
+    for log in replica.hooks.own_logs(db):
+        held, noted = ledger.head(db, log), ledger.acknowledged(db, log)
+        count += (held.seq if held else 0) - (noted.seq if noted else 0)
+    return count
+
+
+def ask(replica: Replica, run: Run) -> dict[str, Any]:
+    """Return the next request: all own heads, a guess of what central lacks, all cursors."""
+    with replica.hooks.reading() as db:
+        own = replica.hooks.own_logs(db)
+        heads = {log: ledger.head(db, log) for log in own}
+        got = ledger.cursors(db)
+        left, push = run.most, []
+        for log in own:
+            if log in run.blocked or log in run.fetch or left < 1:
+                continue
+            first = _first_to_push(db, run, log)
+            entries = ledger.read(db, log, first, left, run.most_bytes)
+            if entries:
+                left -= len(entries)
+                push.append({"log": log, "first": first, "entries": wire.pack_all(entries)})
+        returned = _give_back(db, run, left)
+        have = {
+            scope: {log: wire.pack_head(place) for log, place in got.get(scope, {}).items()}
+            for scope in replica.hooks.scopes(db)
+        }
+        want = {log: _marks(db, log, common) for log, common in run.fetch.items()}
+    moment = replica.hooks.moment()
+    return {
+        "proto": wire.PROTO,
+        "app": replica.realm.name,
+        "now": moment.at,
+        "mono": moment.mono,
+        "boot": moment.boot,
+        "heads": {log: wire.pack_head(place) for log, place in heads.items()},
+        "push": push,
+        "returned": returned,
+        "want": want,
+        "have": have,
+        "skip": sorted(run.skip),
+        "keys": 0,
+    }
+
+
+def take(replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping[str, Any]) -> bool:
+    """Act on one answer and say whether anything moved.
+
+    Raises:
+        NoContact: The answer is not what central would say; nothing of it was believed.
+    """
+    try:
+        noted = _acknowledgements(replica, answer)
+        moved = _take_heads(replica, run, answer, noted)
+        moved |= _take_refusals(run, answer)
+        moved |= _take_tails(replica, run, answer)
+        moved |= _take_pull(replica, run, request, answer)
+        moved |= _take_regressed(replica, run, answer)
+        run.denied |= set(wire.read_list(answer.get("denied"), "denied"))
+    except (BadEntry, Refused) as fault:
+        raise NoContact(f"the answer does not hold ({fault})") from fault
+    except (LookupError, TypeError, AttributeError) as fault:
+        raise NoContact("the answer has another shape than central's") from fault
+    run.more = bool(answer.get("more"))
+    return moved
+
+
+def done(replica: Replica, run: Run) -> bool:
+    """Say whether nothing is left to send, fetch, give back or pull in this run."""
+    if run.more or run.returning or set(run.fetch) - run.blocked:
+        return False
+    with replica.hooks.reading() as db:
+        for log in replica.hooks.own_logs(db):
+            held, there = ledger.head(db, log), run.at_central.get(log)
+            if (
+                log not in run.blocked
+                and held is not None
+                and (there is None or there.seq < held.seq)
+            ):
+                return False
+    return True
+
+
+def _first_to_push(db: sqlite3.Connection, run: Run, log: str) -> int:
+    if log in run.at_central:
+        there = run.at_central[log]
+        return there.seq + 1 if there else 1
+    # Before central has spoken an old acknowledgement is a guess; a wrong one is refused.
+    noted = ledger.acknowledged(db, log)
+    return noted.seq + 1 if noted else 1
+
+
+def _marks(db: sqlite3.Connection, log: str, common: Head | None) -> list[dict[str, Any]]:
+    """Return places ever further back, by which central finds the last one both sides know."""
+    held = ledger.head(db, log)
+    places = [] if common is None else [common]
+    back = 0
+    while held is not None and held.seq - back >= 1:
+        hash_ = ledger.hash_at(db, log, held.seq - back)
+        if hash_ is not None:
+            places.append(Head(held.seq - back, hash_))
+        back = back * 2 + 1
+    return [wire.pack_head(place) for place in places]
+
+
+def _give_back(db: sqlite3.Connection, run: Run, left: int) -> list[dict[str, Any]]:
+    run.sent_back = {}
+    pieces = []
+    for log, after in run.returning.items():
+        entries = ledger.borrowed_of(db, log, after, left)
+        size = 0
+        for count, entry in enumerate(entries):
+            size += len(entry.body) + len(entry.private or b"")
+            if count and size > run.most_bytes:
+                entries = entries[:count]
+                break
+        left -= len(entries)
+        run.sent_back[log] = entries
+        if entries:
+            pieces.append({"log": log, "entries": wire.pack_all(entries)})
+        if left < 1:
+            break
+    return pieces
+
+
+def _acknowledgements(replica: Replica, answer: Mapping[str, Any]) -> dict[str, Acknowledgement]:
+    pin = replica.hooks.central()
+    if pin is None:
+        raise NoContact("this device is enrolled nowhere")
+    found = {}
+    for value in wire.read_list(answer["acknowledgements"], "acknowledgements"):
+        note = Acknowledgement.from_wire(value)
+        note.verify(replica.realm, pin.public_key)
+        found[note.log] = note
+    return found
+
+
+def _take_heads(
+    replica: Replica, run: Run, answer: Mapping[str, Any], noted: dict[str, Acknowledgement]
+) -> bool:
+    said = wire.read_mapping(answer["heads"], "heads")
+    with replica.hooks.reading() as db:
+        own = [log for log in replica.hooks.own_logs(db) if log in said]
+        views = [_View.of(db, log, said[log], noted.get(log)) for log in own]
+    moved = False
+    for view in views:
+        moved |= view.log not in run.at_central or run.at_central[view.log] != view.there
+        run.at_central[view.log] = view.there
+        if view.why is None:
+            run.fetch.pop(view.log, None)
+        elif view.log not in run.fetch:
+            run.fetch[view.log] = None
+            moved = True
+    if any(view.changes for view in views):
+        with replica.hooks.transaction() as db:
+            for view in views:
+                _settle(replica, run, db, view)
+        moved = True
+    return moved
+
+
+@dataclass(frozen=True, slots=True)
+class _View:
+    """What central says of one own log beside what is held here."""
+
+    log: str
+    there: Head | None
+    same: bool
+    why: str | None  # behind or fork, where this log cannot go on
+    note: Acknowledgement | None  # that proves central holds a place of our history
+    old: Acknowledgement | None
+
+    @classmethod
+    def of(
+        cls, db: sqlite3.Connection, log: str, said: Any, note: Acknowledgement | None
+    ) -> "_View":
+        """Compare by number and hash; a number alone proves nothing."""
+        there, mine = wire.read_head(said), ledger.head(db, log)
+        at = said["at"]
+        same = at == 0 or b64(ledger.hash_at(db, log, at) or b"") == said["at_hash"]
+        longer = there is not None and (mine is None or there.seq > mine.seq)
+        why = FORK if not same else BEHIND if longer else None
+        if note is not None and ledger.hash_at(db, log, note.seq) != note.hash:
+            note = None  # true, but of another history than ours
+        return cls(log, there, same, why, note, ledger.acknowledged(db, log))
+
+    @property
+    def fell(self) -> bool:
+        """Say whether central no longer holds what it once acknowledged."""
+        reach = self.there.seq if self.there else 0
+        return self.old is not None and (reach < self.old.seq or not self.same)
+
+    @property
+    def changes(self) -> bool:
+        """Say whether anything has to be written."""
+        fresh = self.note is not None and (
+            self.old is None or (self.old.seq, self.old.hash) != (self.note.seq, self.note.hash)
+        )
+        return self.fell or fresh or self.why is not None
+
+
+def _settle(replica: Replica, run: Run, db: sqlite3.Connection, view: _View) -> None:
+    before = 0 if view.old is None or view.fell else view.old.seq
+    if view.fell:
+        ledger.drop_acknowledgement(db, view.log)
+        run.regressed.add(view.log)
+    if view.note is not None:
+        ledger.keep_acknowledgement(db, view.note)
+        run.pushed += max(0, view.note.seq - before)
+    if view.why is not None and replica.hooks.own_logs(db)[-1] == view.log:
+        # At once, before anything is fetched: nothing more may be appended to a doubtful log.
+        replica.hooks.open_log(db, view.why)
+
+
+def _take_refusals(run: Run, answer: Mapping[str, Any]) -> bool:
+    moved = False
+    for value in wire.read_list(answer["refused"], "refused"):
+        refusal = dict(wire.read_mapping(value, "refused"))
+        log = wire.read_log(refusal["log"])
+        run.tries[log] = run.tries.get(log, 0) + 1
+        # A gap or fork is answered by the heads of this answer; anything else waits for people.
+        if refusal["why"] in ("gap", "fork") and run.tries[log] < MOST_TRIES:
+            moved = True
+        elif log not in run.blocked:
+            run.blocked.add(log)
+            run.refused.append(refusal)
+            moved = True
+    return moved
+
+
+def _take_tails(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
+    moved = False
+    for value in wire.read_list(answer["tail"], "tail"):
+        log = wire.read_log(value["log"])
+        if log not in run.fetch:
+            continue
+        sent = wire.read_list(value["entries"], "entries")
+        try:
+            with replica.hooks.reading() as db:
+                entries = [
+                    verified_alone(replica, db, wire.unpack(replica.realm, one)) for one in sent
+                ]
+            outcome = adopt(replica, log, entries)
+        except (BadEntry, *ODD_DATA) as fault:
+            _hold_back(run, log, fault)
+            continue
+        run.carried += outcome.carried
+        run.pulled += outcome.fresh
+        run.fetch[log] = outcome.common or run.fetch[log]
+        moved |= bool(entries)
+    return moved
+
+
+def _take_pull(
+    replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping[str, Any]
+) -> bool:
+    moved = False
+    for value in wire.read_list(answer["pull"], "pull"):
+        scope, log = value["scope"], wire.read_log(value["log"])
+        sent = wire.read_list(value["entries"], "entries")
+        if scope not in request["have"] or log in run.skip:
+            continue  # nothing of the kind was asked for
+        entries: list[Entry] = []
+        with replica.hooks.reading() as db:
+            for one in sent:
+                try:
+                    entries.append(_pulled(replica, db, log, one))
+                except BadEntry as fault:
+                    _hold_back(run, log, fault)
+                    moved = True
+                    break
+        if entries:
+            moved |= _borrow(replica, run, scope, log, entries)
+    return moved
+
+
+def _pulled(replica: Replica, db: sqlite3.Connection, log: str, value: object) -> Entry:
+    entry = verified_alone(replica, db, wire.unpack(replica.realm, value))
+    if entry.log != log:
+        raise BadEntry("it is of another log than it was sent for")
+    return entry
+
+
+def _borrow(replica: Replica, run: Run, scope: str, log: str, entries: list[Entry]) -> bool:
+    pin = replica.hooks.central()
+    at, frm = replica.hooks.moment().at, pin.dev if pin else ""
+    last = entries[-1]
+    try:
+        with replica.hooks.transaction() as db:
+            fresh = [
+                entry
+                for entry in entries
+                if ledger.borrow(db, entry, scope=scope, at=at, frm=frm, realm=replica.realm)
+            ]
+            if fresh:
+                replica.hooks.follow(db, fresh)
+            ledger.set_cursor(db, scope, log, Head(last.seq, last.hash))
+    except ODD_DATA as fault:
+        _hold_back(run, log, fault)
+        return True
+    run.pulled += len(fresh)
+    return True
+
+
+def _hold_back(run: Run, log: str, fault: Exception) -> None:
+    """Leave one log where it is for this run and say why; the others go on."""
+    why = "unverified" if isinstance(fault, BadEntry) else "failed"
+    run.skip.add(log)
+    run.blocked.add(log)
+    run.refused.append({"log": log, "at": 0, "why": why, "says": str(fault)})
+
+
+def _take_regressed(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
+    moved = False
+    for log, sent in run.sent_back.items():
+        moved = True
+        if sent:
+            run.returning[log] = (sent[-1].seq, sent[-1].hash)
+            continue
+        # All of it was given back: now it is pulled again, from its beginning.
+        with replica.hooks.transaction() as db:
+            ledger.drop_cursors(db, log)
+        run.returning.pop(log)
+        run.returned.add(log)
+        run.more = True
+    for value in wire.read_list(answer["regressed"], "regressed"):
+        log = wire.read_log(value)
+        run.regressed.add(log)
+        if log not in run.returning and log not in run.returned:
+            run.returning[log] = (0, b"")
+            moved = True
+    return moved
