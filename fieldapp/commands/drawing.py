@@ -1,0 +1,277 @@
+"""What a sampler does with bottles and the tap: set, open, fill, close, blank, already done.
+
+Draws that run on are one act (R2). A code this device has not heard of is taken with a note (R15);
+one that belongs elsewhere is barred with what it belongs to, until somebody says that it is filled.
+"""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+from fieldapp.commands.asked import NOW, Asked, When, check_past, due_of, refuse, standing_of
+from fieldapp.commands.kitchen import NotStarted, StrangeAnswer, StrangeDeviation
+from fieldapp.domain.codes import normalise
+from fieldapp.domain.deviations import DEVIATIONS
+from fieldapp.domain.errors import RuleBroken, StepOver
+from fieldapp.domain.facts import (
+    BottleFilled,
+    BottleSet,
+    DeviationStated,
+    DrawPoured,
+    Fact,
+    RunEnded,
+    RunStarted,
+    TapClosed,
+    TapOpened,
+)
+from fieldapp.domain.protocols.standing import DrawStanding, Standing
+from fieldapp.domain.recorded import Reading
+from fieldapp.domain.timetext import format_utc
+
+SENTENCES = {
+    "wrong-bottle": (
+        "{code} is for draw {draw} at {site}. Draw {wanted} of this visit is due: take its bottle,"
+        " or a spare."
+    ),
+    "already-filled": "{code} was filled already, at {site}, draw {draw}, {filled_at}.",
+    "bottle-void": "{code} was taken out of use ({why}). Take another bottle.",
+    "lot-missing": "Type the lot that is printed on the water for the blank.",
+    "nothing-done": "Say of at least one draw what became of it.",
+    "no-such-draw": "This visit has no draw {draw}.",
+}
+"""The sentence of each rule broken here; ``words.py`` merges them."""
+
+FILLS = ("line", "below", "over", "spilled")
+"""How full a bottle is, in one press (R21); the first is the ordinary one."""
+UNDONE = ("waiting", "set", "running")
+
+
+class WrongBottle(RuleBroken):
+    """``code`` belongs to ``draw`` at ``site``, visit ``visit``, not to draw ``wanted`` here."""
+
+    kind = "wrong-bottle"
+
+
+class AlreadyFilled(RuleBroken):
+    """``code`` was filled at ``site``, ``draw``, ``filled_at``."""
+
+    kind = "already-filled"
+
+
+class BottleVoid(RuleBroken):
+    """``code`` is out of use: ``why``."""
+
+    kind = "bottle-void"
+
+
+class LotMissing(RuleBroken):
+    """A field blank without the lot of its water."""
+
+    kind = "lot-missing"
+
+
+class NothingDone(RuleBroken):
+    """A statement of what was done already that names no draw."""
+
+    kind = "nothing-done"
+
+
+class NoSuchDraw(RuleBroken):
+    """``draw`` is none of this visit's."""
+
+    kind = "no-such-draw"
+
+
+@dataclass(frozen=True, slots=True)
+class Drawn:
+    """What became of one draw: its bottle (empty: poured away), how full, measured millilitres."""
+
+    draw: int
+    code: str = ""
+    fill: str = "line"
+    volume_ml: int = 0
+    water_lot: str = ""
+
+
+def set_bottle(
+    pages: Asked, reading: Reading, visit: str, *, code: str, when: When = NOW
+) -> list[Fact]:
+    """Stand a scanned bottle in its place; a spare is bound by it.
+
+    Raises:
+        BadCode: It is no code.
+        WrongBottle: It belongs to another draw or visit.
+        AlreadyFilled: It holds water.
+    """
+    check_past(when, reading)
+    known = normalise(code)
+    told = standing_of(pages, visit, reading)
+    if any(one.bottle == known for one in told.draws):
+        raise StepOver(at=format_utc(reading.at), visit=visit)
+    told, due = due_of(pages, visit, reading, "set", over=BottleSet, bottle=known)
+    draw = _draw(told, due.next_draw)
+    return [_set(pages, visit, known, draw, when)]
+
+
+def open_tap(pages: Asked, reading: Reading, visit: str, when: When = NOW) -> list[Fact]:
+    """Open the tap for draws that run on."""
+    check_past(when, reading)
+    _, due = due_of(pages, visit, reading, "tap", over=TapOpened)
+    return [TapOpened(visit=visit, draws=due.draws, **when.fields())]
+
+
+def fill(
+    pages: Asked, reading: Reading, visit: str, *, fills: Mapping[int, Drawn], when: When = NOW
+) -> list[Fact]:
+    """Record the fill that is due: one draw, or all that ran on since the tap was opened.
+
+    A draw that ``fills`` does not name was filled to the line.
+    """
+    check_past(when, reading)
+    told, due = due_of(pages, visit, reading, "fill", over=BottleFilled)
+    drawn = [_draw(told, number) for number in due.draws]
+    made = [_filling(visit, one, fills.get(one.draw, Drawn(one.draw)), when) for one in drawn]
+    if any(one.state == "running" for one in drawn):
+        return [TapClosed(visit=visit, draws=due.draws, **when.fields()), *made]
+    return made
+
+
+def blank(
+    pages: Asked, reading: Reading, visit: str, *, water_lot: str, code: str = "", when: When = NOW
+) -> list[Fact]:
+    """Pour the field blank: its bottle, the lot of its water (R40)."""
+    check_past(when, reading)
+    told, due = due_of(pages, visit, reading, "blank", over=BottleFilled)
+    draw = _draw(told, due.next_draw or due.draws[0])
+    facts: list[Fact] = []
+    bottle = draw.bottle
+    if not bottle:
+        bottle = normalise(code)
+        facts.append(_set(pages, visit, bottle, draw, when))
+    if not water_lot.strip():
+        raise LotMissing()
+    lot = water_lot.strip()
+    filled = BottleFilled(
+        visit=visit, bottle=bottle, draw=draw.draw, fill="line", water_lot=lot, **when.fields()
+    )
+    return [*facts, filled]
+
+
+def already_done(
+    pages: Asked,
+    reading: Reading,
+    visit: str,
+    *,
+    drawn: Sequence[Drawn],
+    deviation: str,
+    reason: str = "",
+    when: When = NOW,
+) -> list[Fact]:
+    """Record draws as they happened, though a bar stood before them, with the deviation (R1).
+
+    No order, stand or binding is asked for: it has happened. Only what was never a code is
+    refused.
+    """
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.state == "planned":
+        raise NotStarted(visit=visit)
+    if deviation not in DEVIATIONS:
+        raise StrangeDeviation(deviation=deviation)
+    if not drawn:
+        raise NothingDone()
+    stated = DeviationStated(
+        visit=visit,
+        step=told.due.step,
+        deviation=deviation,
+        draws=tuple(one.draw for one in drawn),
+        reason=reason,
+        **when.fields(),
+    )
+    return [stated, *(_as_it_happened(pages, visit, told, one, when) for one in drawn)]
+
+
+def start_run(pages: Asked, reading: Reading, visit: str, when: When = NOW) -> list[Fact]:
+    """Open the tap to waste, as a step asks."""
+    check_past(when, reading)
+    _, due = due_of(pages, visit, reading, "run", over=RunStarted)
+    return [RunStarted(visit=visit, step=due.step, **when.fields())]
+
+
+def end_run(pages: Asked, reading: Reading, visit: str, when: When = NOW) -> list[Fact]:
+    """Close the tap after a run to waste."""
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.due.kind != "run" or told.due.since is None:
+        refuse(pages, visit, told, RunEnded)
+    return [RunEnded(visit=visit, step=told.due.step, **when.fields())]
+
+
+def _set(pages: Asked, visit: str, code: str, draw: DrawStanding, when: When) -> BottleSet:
+    row = pages.bottle(code)
+    if row is not None:
+        _check_belongs(row, visit, code, draw.draw)
+    return BottleSet(
+        visit=visit,
+        bottle=code,
+        draw=draw.draw,
+        kind_=draw.kind,
+        purpose=draw.purpose,
+        held="unknown" if row is None else "known",
+        **when.fields(),
+    )
+
+
+def _check_belongs(row: Mapping[str, object], visit: str, code: str, wanted: int) -> None:
+    """Refuse a bottle that is void, full or somebody else's; R1's three ways stand beside."""
+    what = {"code": code, "site": row["site"] or row["visit"], "draw": row["draw"]}
+    if row["voided"]:
+        raise BottleVoid(code=code, why=row["voided"])
+    if row["filled"]:
+        raise AlreadyFilled(**what, filled_at=row["filled_at"])
+    bound = row["set_at"] or row["printed_for"]
+    elsewhere = bound and (row["visit"], row["draw"]) != (visit, wanted)
+    if elsewhere:
+        raise WrongBottle(**what, visit=row["visit"], wanted=wanted)
+
+
+def _filling(visit: str, draw: DrawStanding, given: Drawn, when: When) -> Fact:
+    if given.fill not in FILLS:
+        raise StrangeAnswer(question="fill", answer=given.fill)
+    if not draw.keep:
+        return DrawPoured(visit=visit, draw=draw.draw, fill=given.fill, **when.fields())
+    return BottleFilled(
+        visit=visit,
+        bottle=draw.bottle,
+        draw=draw.draw,
+        fill=given.fill,
+        volume_ml=given.volume_ml,
+        **when.fields(),
+    )
+
+
+def _as_it_happened(pages: Asked, visit: str, told: Standing, given: Drawn, when: When) -> Fact:
+    draw = _draw(told, given.draw)
+    code = normalise(given.code) if given.code.strip() else draw.bottle
+    if given.fill not in FILLS:
+        raise StrangeAnswer(question="fill", answer=given.fill)
+    if not code:
+        return DrawPoured(visit=visit, draw=draw.draw, fill=given.fill, **when.fields())
+    row = pages.bottle(code)
+    if row is not None and row["filled"] and row["visit"] == visit and row["draw"] == draw.draw:
+        raise StepOver(at=str(row["filled_at"]), visit=visit)
+    return BottleFilled(
+        visit=visit,
+        bottle=code,
+        draw=draw.draw,
+        fill=given.fill,
+        volume_ml=given.volume_ml,
+        water_lot=given.water_lot.strip(),
+        **when.fields(),
+    )
+
+
+def _draw(told: Standing, number: int) -> DrawStanding:
+    for one in told.draws:
+        if one.draw == number:
+            return one
+    raise NoSuchDraw(draw=number)

@@ -1,0 +1,363 @@
+"""What a sampler does at a door and at a tap: open, ask, leave, say what differs, sign, close.
+
+Each function checks the rules and returns the facts of one press, or raises. What has happened is
+never refused (R1); what has not may be barred. Bottles and taps are in ``drawing.py``.
+"""
+
+from collections.abc import Sequence
+from datetime import datetime, timedelta
+
+from fieldapp.commands.asked import (
+    NOW,
+    Asked,
+    NotYet,
+    When,
+    check_past,
+    due_of,
+    latest,
+    not_past,
+    planned,
+    refuse,
+    standing_of,
+)
+from fieldapp.domain.bottles import in_order
+from fieldapp.domain.deviations import DEVIATIONS
+from fieldapp.domain.errors import NotDue, RuleBroken, StepOver, Unknown
+from fieldapp.domain.facts import (
+    DeviationStated,
+    EntryWithdrawn,
+    Fact,
+    OccupantAgreed,
+    QuestionAnswered,
+    VisitClosed,
+    VisitLeft,
+    VisitOpened,
+    VisitResumed,
+    VisitSigned,
+    WaterUsed,
+)
+from fieldapp.domain.protocols.steps import CONSENT
+from fieldapp.domain.recorded import Reading
+from fieldapp.domain.timetext import format_utc
+
+SENTENCES = {
+    "no-protocol": (
+        "The protocol {protocol} of this visit has not reached this device. Send and fetch, then"
+        " open the visit again."
+    ),
+    "not-yet": "{stated} lies ahead of this device's clock. Give a time that has passed.",
+    "crossed-times": "The first time is later than the second. Exchange them.",
+    "nothing-said": "Choose when water last ran, or say that nobody knows.",
+    "strange-answer": "{answer} is no answer to this question. Choose one of those shown.",
+    "strange-deviation": "{deviation} is nothing this device knows. Choose one of those shown.",
+    "name-missing": "Type the name of whoever signs.",
+    "not-yours": "{by} recorded that press. Only the person who made it takes it back.",
+    "taken-back-late": (
+        "Something else was recorded since. This press stays; what is wrong in it is corrected, not"
+        " taken back."
+    ),
+    "not-started": "This visit has not begun. Open it first.",
+    "bottles-waiting": (
+        "Water stands or runs in this visit: draws {draws} are set and not filled. Say what became"
+        " of them, then close."
+    ),
+}
+"""The sentence of each rule broken here; ``words.py`` merges them."""
+
+LEAVE_WHYS = (
+    "waiting",
+    "nobody-home",
+    "child-alone",
+    "vacant",
+    "water-off",
+    "street-works",
+    "wrong-house",
+    "unfit",
+    "refused",
+    "other",
+)
+"""Why a sampler leaves (R18, R38); the first is the ordinary one."""
+
+OUTCOMES = ("done", "unfit", "refused", "nobody-home", "vacant", "water-off", "not-possible")
+"""How a visit ends. All but the first close it without the bottles that were planned."""
+
+EXACT = ("at", "about", "between", "unknown")
+KNOWN_BY = ("stated", "seen", "metered")
+WHERE = ("this-tap", "kitchen", "bath", "toilet", "laundry", "outside", "unsaid")
+ABOUT = timedelta(minutes=15)
+"""What "about" gives and takes on either side. Our choice: half the distance of two chips."""
+
+TAKE_BACK_WITHIN = timedelta(seconds=10)
+"""The least time for which a press can be taken back, though another follows it (R45)."""
+
+
+class CrossedTimes(RuleBroken):
+    """The last use is put between two times of which the first is the later."""
+
+    kind = "crossed-times"
+
+
+class NothingSaid(RuleBroken):
+    """A statement of last use without a time that does not say "unknown"."""
+
+    kind = "nothing-said"
+
+
+class StrangeAnswer(RuleBroken):
+    """``answer`` is none of the answers that the document offers to ``question``."""
+
+    kind = "strange-answer"
+
+
+class StrangeDeviation(RuleBroken):
+    """``deviation`` is no kind of the table."""
+
+    kind = "strange-deviation"
+
+
+class NameMissing(RuleBroken):
+    """A signature without a name."""
+
+    kind = "name-missing"
+
+
+class NotYours(RuleBroken):
+    """``by`` recorded the press that somebody else would take back."""
+
+    kind = "not-yours"
+
+
+class TakenBackLate(RuleBroken):
+    """Another act followed, and ten seconds are over."""
+
+    kind = "taken-back-late"
+
+
+class NotStarted(RuleBroken):
+    """The visit has not been opened."""
+
+    kind = "not-started"
+
+
+class BottlesWaiting(RuleBroken):
+    """Bottles of ``draws`` are set or running; a visit closed as done would leave them open."""
+
+    kind = "bottles-waiting"
+
+
+def open_visit(pages: Asked, reading: Reading, visit: str, when: When = NOW) -> list[Fact]:
+    """Begin a visit at the door."""
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.state != "planned":
+        refuse(pages, visit, told, VisitOpened)
+    return [VisitOpened(visit=visit, **when.fields())]
+
+
+def leave_visit(
+    pages: Asked, reading: Reading, visit: str, *, why: str, reason: str = "", when: When = NOW
+) -> list[Fact]:
+    """Leave in one press; the reason may follow (R38)."""
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.state != "open":
+        refuse(pages, visit, told, VisitLeft)
+    _one_of(why, LEAVE_WHYS)
+    return [VisitLeft(visit=visit, why=why, reason=reason, **when.fields())]
+
+
+def resume_visit(pages: Asked, reading: Reading, visit: str, when: When = NOW) -> list[Fact]:
+    """Come back to a visit that was left (R18)."""
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.state != "left":
+        refuse(pages, visit, told, VisitResumed)
+    return [VisitResumed(visit=visit, **when.fields())]
+
+
+def agree(
+    pages: Asked, reading: Reading, visit: str, *, how: str, name: str = "", when: When = NOW
+) -> list[Fact]:
+    """Record that somebody of the household agrees, or refuses."""
+    check_past(when, reading)
+    _one_of(how, ("spoken", "signed", "refused"))
+    told = standing_of(pages, visit, reading)
+    if told.due.kind != "ask" or told.due.question != CONSENT:
+        refuse(pages, visit, told, OccupantAgreed)
+    return [OccupantAgreed(visit=visit, how=how, name=name, **when.fields())]
+
+
+def answer(
+    pages: Asked,
+    reading: Reading,
+    visit: str,
+    *,
+    question: str,
+    answer: str,
+    note: str = "",
+    when: When = NOW,
+) -> list[Fact]:
+    """Record one answer to the question that is due."""
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.due.kind not in ("ask", "wait") or told.due.question != question:
+        refuse(pages, visit, told, QuestionAnswered, question=question)
+    if answer not in told.due.answers:
+        raise StrangeAnswer(question=question, answer=answer)
+    return [
+        QuestionAnswered(visit=visit, question=question, answer=answer, note=note, **when.fields())
+    ]
+
+
+def bounds(
+    exact: str, at: datetime | None, to: datetime | None, reading: Reading
+) -> tuple[datetime, datetime] | None:
+    """Return between which moments water last ran, None where nobody knows.
+
+    "About" gives and takes a quarter of an hour, but never later than now.
+
+    Raises:
+        NothingSaid: A time is missing.
+        CrossedTimes: The second is earlier than the first.
+        NotYet: It lies ahead.
+    """
+    _one_of(exact, EXACT)
+    if exact == "unknown":
+        return None
+    if at is None or (exact == "between" and to is None):
+        raise NothingSaid()
+    first = at - ABOUT if exact == "about" else at
+    last = {"at": at, "about": at + ABOUT}.get(exact, to or at)
+    if not_past(to or at, reading):
+        raise NotYet(stated=format_utc(to or at))
+    if last < first:
+        raise CrossedTimes()
+    return first, max(first, min(last, reading.at))
+
+
+def state_last_use(
+    pages: Asked,
+    reading: Reading,
+    visit: str,
+    *,
+    exact: str,
+    at: datetime | None = None,
+    to: datetime | None = None,
+    where: str = "unsaid",
+    told_by: str = "resident",
+    known_by: str = "stated",
+    again: bool = False,
+) -> list[Fact]:
+    """Record when water last ran as a statement (R4); ``again``: it ran once more, at any step."""
+    _one_of(where, WHERE)
+    _one_of(known_by, KNOWN_BY)
+    told = standing_of(pages, visit, reading)
+    if again and told.state == "planned":
+        raise NotStarted(visit=visit)
+    if not again and told.due.kind != "last-use":
+        refuse(pages, visit, told, WaterUsed)
+    limits = bounds(exact, at, to, reading)
+    first, last = (format_utc(one) for one in limits) if limits else ("", "")
+    used = WaterUsed(
+        visit=visit,
+        from_=first,
+        to=last,
+        exact=exact,
+        where=where,
+        known_by=known_by,
+        told_by=told_by if known_by == "stated" else "",
+    )
+    return [used]
+
+
+def state_deviation(
+    pages: Asked,
+    reading: Reading,
+    visit: str,
+    *,
+    kind: str,
+    draws: Sequence[int] = (),
+    reason: str = "",
+    when: When = NOW,
+) -> list[Fact]:
+    """Record that something was not as the protocol says; its direction is the table's."""
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.state == "planned":
+        raise NotStarted(visit=visit)
+    if kind not in DEVIATIONS:
+        raise StrangeDeviation(deviation=kind)
+    stated = DeviationStated(
+        visit=visit,
+        step=told.due.step,
+        deviation=kind,
+        draws=tuple(sorted(set(draws))),
+        reason=reason,
+        **when.fields(),
+    )
+    return [stated]
+
+
+def sign(
+    pages: Asked, reading: Reading, visit: str, *, name: str, close: bool = False
+) -> list[Fact]:
+    """Sign with a typed name; ``close``: end the visit in the same press."""
+    told, due = due_of(pages, visit, reading, "sign", over=VisitSigned)
+    if not name.strip():
+        raise NameMissing(who=due.who)
+    signed = VisitSigned(visit=visit, who=due.who, how="typed", name=name.strip())
+    if not close:
+        return [signed]
+    return [signed, VisitClosed(visit=visit, outcome=told.stopped or "done")]
+
+
+def close(
+    pages: Asked, reading: Reading, visit: str, *, outcome: str = "", when: When = NOW
+) -> list[Fact]:
+    """Close the visit: as done when all is done, else with how it ended without its bottles."""
+    check_past(when, reading)
+    told = standing_of(pages, visit, reading)
+    if told.state == "closed":
+        refuse(pages, visit, told, VisitClosed)
+    if told.due.kind == "close":
+        return [_closed(visit, outcome or told.stopped or "done", when)]
+    if outcome in ("", "done"):
+        raise NotDue(due=told.due.kind, visit=visit)
+    open_draws = [one.draw for one in told.draws if one.state == "running"]
+    if open_draws:
+        raise BottlesWaiting(draws=open_draws)
+    return [_closed(visit, outcome, when)]
+
+
+def take_back(
+    pages: Asked, reading: Reading, visit: str, *, of: str, by: str, reason: str = ""
+) -> list[Fact]:
+    """Withdraw one press, all its entries: the latest on the visit, or one not ten seconds old."""
+    planned(pages, visit)
+    entry = pages.fact(of)
+    if entry is None or f"visit:{visit}" not in entry.fact.subjects():
+        raise Unknown(what="entry", name=of[:8])
+    if pages.gone([of]):
+        raise StepOver(at=format_utc(reading.at), visit=visit)
+    if entry.by != by:
+        raise NotYours(by=entry.by)
+    acts = [one for one in in_order(pages.recorded(visit)) if one.fact.place == "kitchen"]
+    is_latest = bool(acts) and acts[-1].act == entry.act
+    if not is_latest and reading.at - entry.at > TAKE_BACK_WITHIN:
+        raise TakenBackLate()
+    return [EntryWithdrawn(of=one.hash, reason=reason) for one in acts if one.act == entry.act]
+
+
+def latest_left(pages: Asked, visit: str) -> VisitLeft | None:
+    """Return the latest leaving of a visit, for the page that says why it waits."""
+    found = latest(pages.recorded(visit), VisitLeft)
+    return found.fact if found and isinstance(found.fact, VisitLeft) else None
+
+
+def _closed(visit: str, outcome: str, when: When) -> VisitClosed:
+    return VisitClosed(visit=visit, outcome=outcome, **when.fields())
+
+
+def _one_of(value: str, known: Sequence[str]) -> None:
+    if value not in known:
+        raise StrangeAnswer(question="", answer=value)
