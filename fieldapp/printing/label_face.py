@@ -48,13 +48,15 @@ SLIGHTLY_SMALLER = (1.0, 0.94, 0.88)
 class Row:
     """One thing to say: its wordings from the fullest to the shortest, and its size in points.
 
-    ``below`` rows stand under the pen's lines, the others above them.
+    ``below`` rows stand under the pen's lines, the others above them. A row that ``may_be_cut``
+    loses its end before any other is shortened beyond its wordings.
     """
 
     wordings: tuple[str, ...]
     size: float
     font: str = PLAIN
     below: bool = False
+    may_be_cut: bool = False
 
 
 @dataclass(frozen=True)
@@ -212,7 +214,7 @@ def _set_row(row: Row, width: float, attempt: Attempt) -> list[Line] | None:
         lines = _set_wording(wording, row.font, size, width)
         if len(lines) <= attempt.most_lines and all(line.width <= width for line in lines):
             return lines
-    if not attempt.cut:
+    if not (attempt.cut or (attempt.shorten and row.may_be_cut)):
         return None
     return [Line(_elided(row.wordings[-1], row.font, size, width), row.font, size)]
 
@@ -240,11 +242,16 @@ def _broken(text: str, font: str, size: float, width: float) -> list[str]:
 
 
 def _elided(text: str, font: str, size: float, width: float) -> str:
+    """Return the text cut to the width; what stands after the last dot is kept, if it can be."""
     if _text_width(text, font, size) <= width:
         return text
-    while text and _text_width(text + "…", font, size) > width:
-        text = text[:-1]
-    return text.rstrip(" ·,") + "…"
+    head, dot, end = text.rpartition(" · ")
+    room = width - _text_width(dot + end, font, size)
+    if not head or room < width / 4:
+        head, dot, end, room = text, "", "", width
+    while head and _text_width(head + "…", font, size) > room:
+        head = head[:-1]
+    return head.rstrip(" ·,") + "…" + dot + end
 
 
 def _text_width(text: str, font: str, size: float) -> float:

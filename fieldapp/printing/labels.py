@@ -48,7 +48,7 @@ _NO_BREAK = "\u00a0"
 _THIN_SPACES = str.maketrans("\u2009\u202f\t\r\n", _NO_BREAK * 2 + "   ")
 
 # How much of a site's code is shown where all of it finds no room, in characters.
-SITE_LENGTHS = (24, 16, 10, 6)
+SITE_LENGTHS = (24, 16, 10, 6, 2)
 
 # Cutting marks stand this far from the outermost labels and are this long.
 _MARK_GAP_MM, _MARK_MM = 1.0, 3.0
@@ -169,7 +169,7 @@ def _face(label: Label) -> Face:
         code=code,
         grouped=codes.grouped(code),
         rows=tuple(rows),
-        notes=(Row((note,), 5.6, below=True),) if note else (),
+        notes=(Row((note,), 5.6, below=True, may_be_cut=True),) if note else (),
         optional=tuple(_optional(label)),
         pens=_pens(label),
     )
@@ -229,8 +229,7 @@ def _second_line(label: Label) -> Iterator[str]:
     if not label.analyse:
         return
     many = ngettext("{count} analysis", "{count} analyses", len(names)).format(count=len(names))
-    for counted in (_bound(_printable(many)), f"+{len(names)}"):
-        yield _joined(_site_words(short), counted, end)
+    yield _joined(_site_words(short), _bound(_printable(many)), end)
 
 
 def _counted(names: list[str], count: int) -> str:

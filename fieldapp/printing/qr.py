@@ -28,7 +28,7 @@ def modules(code: str) -> list[list[bool]]:
     from qrcode.constants import ERROR_CORRECT_M
 
     symbol = QRCode(version=VERSION, error_correction=ERROR_CORRECT_M, border=0, mask_pattern=MASK)
-    text = codes.normalise(code).encode("ascii")
+    text = codes.normalise(code)
     symbol.add_data(util.QRData(text, mode=util.MODE_ALPHA_NUM))
     symbol.make(fit=False)
     return [[bool(module) for module in row] for row in symbol.get_matrix()]
