@@ -478,6 +478,11 @@ class Store:
             raise Refused("not-central", "This node enrols no devices. Ask for central's address.")
         return self.enrolling(dev, public_key, code)
 
+    def rebuild(self) -> int:
+        """Make all page tables anew from the record; returns how many entries were read."""
+        with self.transaction() as db:
+            return projections.rebuild(db, self._all_entries(db))
+
     def replica(self) -> Replica:
         """Return this node's part in replication; its session lasts as long as the node."""
         if self._replica is None:

@@ -32,7 +32,7 @@ class Recorded:
 
 @dataclass(frozen=True, slots=True)
 class Reading:
-    """One reading of this node's clock: wall (aware UTC), offset in minutes, ms that count sleep."""
+    """One reading of this node's clock: wall (aware UTC), offset in minutes, ms with sleep."""
 
     at: datetime
     off: int

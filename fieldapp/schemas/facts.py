@@ -79,7 +79,7 @@ def _field(kind: str, key: str, hint: Any, required: bool, hidden: bool) -> fiel
     origin, inner = typing.get_origin(hint), typing.get_args(hint)
     if hint is bool:
         return fields.Boolean(required=required, truthy={True}, falsy={False})
-    if hint is int:
+    if hint in (int, int | None):
         return fields.Integer(required=required, strict=True)
     if origin is tuple:
         return fields.List(_items(key, inner[0]), required=required)

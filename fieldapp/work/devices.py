@@ -95,12 +95,12 @@ def enrol(store: Store, *, url: str, code: str, progress: Callable[..., None]) -
         ``central``, ``person``, ``places``.
     """
     peer = HttpPeer(url, store.realm)
-    answer = enrol_at(store.replica(), peer, _plain(code))
+    answer = enrol_at(peer, store.realm, store.key, store.dev, _plain(code))
     clock = "scripted" if store.identity.scripted else ""
     if answer.get("clock", "") != clock:
         raise Refused(
             "other-clock",
-            "A rehearsal's device and a real central do not mix. Enrol it at a rehearsal's central.",
+            "A rehearsal's device and a real central do not mix. Use a central of the same kind.",
         )
     unb64(str(answer["public_key"]))  # a torn answer shows here, before anything is kept
     identity.pin_central(store.folder, {

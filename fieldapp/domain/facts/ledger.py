@@ -29,11 +29,15 @@ class LogCarried(Fact):
 
 @fact("clock.checked", place="ledger", reach=ALL)
 class ClockChecked(Fact):
-    """One comparison of this device's clock with central's, at a session."""
+    """One comparison of this device's clock with central's, at a session.
+
+    ``offset_ms`` is this clock less central's, give or take half of ``rtt_ms``; both are absent
+    where the device could not tell.
+    """
 
     central_at: str
-    rtt_ms: int
-    offset_ms: int
+    rtt_ms: int | None = None
+    offset_ms: int | None = None
 
 
 @fact("entry.corrected", place="ledger", reach=ROUTE_LAB)

@@ -1,0 +1,211 @@
+"""A running node: its web servers, ``running.json``, and handing work to it from a command."""
+
+import contextlib
+import json
+import os
+import secrets
+import socket
+import threading
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from fieldapp import identity
+from fieldapp.store import Store
+from sync.errors import FolderHeld, SyncError, Unsuitable
+
+RUNNING = "running.json"
+THREADS = 4
+"""Four threads and one write lock: about a thousand durable posts a second (design 8)."""
+
+
+class HandedBack(SyncError):
+    """The running node did the work and answers no, or fails; ``lines`` says why."""
+
+    def __init__(self, lines: list[str], *, known: bool) -> None:
+        self.lines, self.known = lines, known
+        super().__init__(" ".join(lines))
+
+
+@dataclass(frozen=True)
+class Running:
+    """Where a node answers on this machine."""
+
+    port: int
+    token: str
+
+    @property
+    def url(self) -> str:
+        """Return its address."""
+        return f"http://127.0.0.1:{self.port}"
+
+
+def read_running(folder: Path) -> Running | None:
+    """Return where the folder's node says it runs; nothing where it does not say."""
+    with contextlib.suppress(OSError, ValueError, KeyError):
+        found = json.loads((folder / RUNNING).read_text("utf-8"))
+        return Running(int(found["port"]), str(found["token"]))
+    return None
+
+
+def serve(
+    store: Store,
+    *,
+    port: int = 0,
+    door: bool = False,
+    listen: str = "",
+    certificate: str = "",
+    key: str = "",
+    ready: Callable[[Running], None],
+) -> None:
+    """Serve the node's pages on 127.0.0.1 until a signal ends it.
+
+    Args:
+        store: The open node.
+        port: The port; 0 takes the one used last, else a free one.
+        door: Open ``/sync`` here: the node is a central.
+        listen: ``ADDRESS:PORT`` that opens ``/sync`` to others, never a page.
+        certificate: PEM file for ``listen``; needed for any address but loopback.
+        key: PEM file of its private key.
+        ready: Told once it answers.
+    """
+    from waitress.server import create_server
+
+    from fieldapp.web import create_app
+    from fieldapp.web.replication import open_door
+
+    token = secrets.token_urlsafe(32)
+    app = create_app(store, token=token)
+    if door:
+        open_door(app, store)
+    bound = _bind(port or int(store.get("port") or 0), asked=bool(port))
+    server = create_server(app, sockets=[bound], threads=THREADS, ident="")
+    running = Running(bound.getsockname()[1], token)
+    with store.transaction():
+        store.put("port", str(running.port))
+    outer = _open_listen(store, listen, certificate, key) if listen else None
+    identity.write_private(
+        store.folder / RUNNING, {"port": running.port, "token": token, "pid": os.getpid()}
+    )
+    try:
+        ready(running)
+        server.run()
+    finally:
+        (store.folder / RUNNING).unlink(missing_ok=True)
+        if outer is not None:
+            outer()
+        server.close()
+
+
+def _bind(port: int, *, asked: bool) -> socket.socket:
+    """Bind loopback, at the port used last where it is free."""
+    bound = socket.socket(socket.AF_INET, socket.SOCK_STREAM)
+    bound.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
+    try:
+        bound.bind(("127.0.0.1", port))
+    except OSError as fault:
+        if asked:
+            bound.close()
+            raise Unsuitable(
+                f"Port {port} is taken by another program. Name another one, or none."
+            ) from fault
+        bound.bind(("127.0.0.1", 0))
+    bound.listen(64)
+    return bound
+
+
+def _open_listen(store: Store, listen: str, certificate: str, key: str) -> Callable[[], None]:
+    """Open the door to others: https, or plain http on loopback alone."""
+    from fieldapp.web.replication import create_door
+
+    host, _, port = listen.rpartition(":")
+    host = host.strip("[]")
+    if not host or not port.isdigit():
+        raise Unsuitable(f"{listen!r} is no ADDRESS:PORT. Give one like 0.0.0.0:8443.")
+    local = host in ("127.0.0.1", "::1", "localhost")
+    if not local and not (certificate and key):
+        raise Unsuitable(
+            "Devices reach a central by https only. Give --certificate and --key, or listen on "
+            "127.0.0.1 behind a server of yours that does https."
+        )
+    try:
+        from cheroot.ssl.builtin import BuiltinSSLAdapter
+        from cheroot.wsgi import Server
+    except ImportError as fault:
+        raise Unsuitable(
+            "Listening needs the central extra: install 'tapwitness[central]'."
+        ) from fault
+    server = Server((host, int(port)), create_door(store), numthreads=THREADS)
+    if certificate and key:
+        server.ssl_adapter = BuiltinSSLAdapter(certificate, key)
+    try:
+        server.prepare()
+    except OSError as fault:
+        raise Unsuitable(
+            f"{listen} cannot be listened on: {fault.strerror}. Name another."
+        ) from fault
+    threading.Thread(target=server.serve, daemon=True).start()
+    return server.stop  # type: ignore[no-any-return]
+
+
+def hand_over(
+    folder: Path, name: str, asked: Mapping[str, Any], progress: Callable[[str, int, int], None]
+) -> dict[str, Any]:
+    """Do work at the folder's node: here when nobody runs it, else at the running one.
+
+    Raises:
+        HandedBack: the running node answers no.
+        FolderHeld: another program holds the folder and does not say where it answers.
+    """
+    from fieldapp import work
+
+    try:
+        store = Store.open(folder)
+    except FolderHeld:
+        running = read_running(folder)
+        if running is None:
+            raise
+        return _hand_to(running, name, asked, progress)
+    with store:
+        return work.do(store, name, asked, progress)
+
+
+def _hand_to(
+    running: Running,
+    name: str,
+    asked: Mapping[str, Any],
+    progress: Callable[[str, int, int], None],
+) -> dict[str, Any]:
+    for line in _lines(running, name, asked):
+        if "progress" in line:
+            progress(str(line["progress"]), int(line["done"]), int(line["of"]))
+        elif "answer" in line:
+            return dict(line["answer"])
+        elif "fault" in line:
+            raise HandedBack(list(line["fault"]["lines"]), known=bool(line["fault"]["known"]))
+    raise HandedBack(["The running node stopped in the middle. Run the command again."], known=True)
+
+
+def _lines(running: Running, name: str, asked: Mapping[str, Any]) -> Iterator[dict[str, Any]]:
+    from urllib import error, request
+
+    post = request.Request(
+        f"{running.url}/work/{name}",
+        data=json.dumps(asked).encode(),
+        headers={"Authorization": f"Bearer {running.token}", "Content-Type": "application/json"},
+    )
+    opener = request.build_opener(request.ProxyHandler({}))
+    try:
+        with opener.open(post) as answer:
+            for line in answer:
+                yield json.loads(line)
+    except error.HTTPError as fault:
+        raise HandedBack(
+            [f"The running node refused the work ({fault.code}). Restart it and try again."],
+            known=True,
+        ) from fault
+    except OSError as fault:
+        raise HandedBack(
+            ["The running node does not answer. Stop it, then run the command again."], known=True
+        ) from fault
