@@ -1,0 +1,175 @@
+// The counter at speed: a scan that arrives while another is answered waits its turn, none is lost.
+// Every scan is posted by itself with the act the node minted for it; the same act goes again when
+// the line breaks. Without this module each scan is a plain form post.
+
+const ANSWER_WITHIN_MS = 8000
+const TRY_AGAIN_MS = 1500
+const TONES_HZ = { in: [1320], hold: [660, 660], stop: [220, 220, 220], number: [990] }
+const TONE_S = 0.12
+
+export function startCounter(root = document) {
+  const form = root.querySelector("form[data-counter]")
+  if (form) new Counter(form, root).start()
+}
+
+class Counter {
+  constructor(form, root) {
+    this.form = form
+    this.root = root
+    this.field = form.elements.namedItem("bottle")
+    this.number = form.elements.namedItem("laboratory_number")
+    this.hint = form.querySelector("[data-queue]")
+    this.said = this.hint.textContent
+    this.waiting = []
+    this.busy = false
+  }
+
+  start() {
+    this.form.addEventListener("submit", event => this.take(event))
+    this.form.addEventListener("change", event => this.chosen(event))
+    addEventListener("pagehide", event => this.keepOpen(event))
+    addEventListener("beforeunload", event => this.keepOpen(event))
+    this.root.addEventListener("keydown", event => this.catchStrayKeys(event))
+    this.focus()
+  }
+
+  // Everything but the bottle and the number belongs to this one scan and falls back after it.
+  take(event) {
+    event.preventDefault()
+    event.stopImmediatePropagation()
+    const fields = new FormData(this.form)
+    if (!String(fields.get("bottle")).trim()) return
+    if (fields.get("numbering") === "sticker" && !String(fields.get("laboratory_number")).trim()) {
+      this.number.focus()
+      return
+    }
+    this.waiting.push({ fields, typed: this.number.value !== this.number.defaultValue })
+    this.clear()
+    this.count()
+    this.work()
+  }
+
+  async work() {
+    if (this.busy) return
+    this.busy = true
+    while (this.waiting.length) {
+      const scan = this.waiting[0]
+      const { fields } = scan
+      fields.set("act", this.form.elements.namedItem("act").value)
+      if (fields.get("numbering") === "counted" && !scan.typed) {
+        fields.set("laboratory_number", this.number.defaultValue)
+      }
+      const answer = await this.send(fields)
+      this.waiting.shift()
+      this.show(answer, fields)
+      this.count()
+    }
+    this.busy = false
+  }
+
+  // The act stays the same until the node has answered, so a reply lost on the way records once.
+  async send(fields) {
+    const unsent = this.root.querySelector("[data-unsent]")
+    for (;;) {
+      try {
+        const reply = await fetch(this.form.action, {
+          method: "POST", body: new URLSearchParams(fields), headers: { Accept: "application/json" },
+          signal: AbortSignal.timeout(ANSWER_WITHIN_MS),
+        })
+        if (unsent) unsent.hidden = true
+        return await reply.json()
+      } catch {
+        if (unsent) unsent.hidden = false
+        await new Promise(resolve => setTimeout(resolve, TRY_AGAIN_MS))
+      }
+    }
+  }
+
+  show(answer, fields) {
+    const word = answer.word || "stop"
+    const place = this.root.querySelector("#answer")
+    if (answer.answer) place.innerHTML = answer.answer
+    else place.replaceChildren(this.plainStop(answer.says))
+    place.firstElementChild?.classList.add("told--new")
+    if (answer.received) this.root.querySelector("#received").innerHTML = answer.received
+    if (answer.act) this.form.elements.namedItem("act").value = answer.act
+    if (answer.number !== undefined && fields.get("numbering") === "counted") this.next(answer.number)
+    beep(TONES_HZ[word] ?? TONES_HZ.stop)
+    if (word === "stop") navigator.vibrate?.(300)
+  }
+
+  plainStop(says) {
+    const panel = document.createElement("div")
+    panel.className = "told told--stop"
+    const sentence = document.createElement("p")
+    sentence.className = "told__says"
+    sentence.textContent = says
+    panel.append(sentence)
+    return panel
+  }
+
+  // A number that the clerk is typing is left alone.
+  next(number) {
+    const untouched = this.number.value === this.number.defaultValue
+    this.number.defaultValue = number
+    if (untouched) this.number.value = number
+  }
+
+  clear() {
+    this.field.value = ""
+    this.number.value = this.form.elements.namedItem("numbering").value === "counted"
+      ? this.number.defaultValue : ""
+    this.form.querySelector("[name=outcome][value=accepted]").checked = true
+    this.form.elements.namedItem("checks").value = ""
+    this.form.elements.namedItem("reason").value = ""
+    this.focus()
+  }
+
+  chosen({ target }) {
+    if (target.name === "outcome" && target.value !== "accepted") {
+      this.form.querySelector("details").open = true
+      this.form.elements.namedItem("checks").focus()
+    } else if (target.type === "radio") {
+      this.focus()
+    }
+  }
+
+  count() {
+    const n = this.waiting.length
+    this.hint.textContent = n > 1 ? `${this.said} (${n})` : this.said
+  }
+
+  focus() {
+    this.field.focus({ preventScroll: true })
+  }
+
+  // A scanner types wherever the cursor is; what no field takes goes to the scan field.
+  catchStrayKeys(event) {
+    const elsewhere = event.target.closest?.("input, select, textarea, button, a, summary")
+    if (elsewhere || event.ctrlKey || event.altKey || event.metaKey) return
+    if (event.key.length === 1) this.focus()
+  }
+
+  keepOpen(event) {
+    if (this.waiting.length) event.preventDefault()
+  }
+}
+
+export function beep(tones, Audio = globalThis.AudioContext) {
+  if (!Audio) return
+  const sound = new Audio()
+  tones.forEach((hertz, place) => {
+    const tone = sound.createOscillator()
+    const loudness = sound.createGain()
+    const from = sound.currentTime + place * TONE_S * 1.5
+    tone.frequency.value = hertz
+    loudness.gain.setValueAtTime(0.25, from)
+    loudness.gain.exponentialRampToValueAtTime(0.001, from + TONE_S)
+    tone.connect(loudness).connect(sound.destination)
+    tone.start(from)
+    tone.stop(from + TONE_S)
+  })
+  setTimeout(() => sound.close(), 1000)
+}
+
+startCounter(document)
