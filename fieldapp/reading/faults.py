@@ -224,7 +224,9 @@ SENTENCES: dict[str, str] = {
     "formula": N_("{value} is a formula. Put its value there, as a number or plain text."),
     "no-bottle": N_("No bottle is named. Give its code or the laboratory's number."),
     "analyte-blank": N_("No analyte stands here. Write lead (Pb) or copper (Cu)."),
-    "bad-code": N_("{value} is no bottle code ({why}). Read its eleven characters again."),
+    "code-length": N_("{value} has {length} characters; a bottle code has {wanted}. Type it anew."),
+    "code-character": N_("{value} holds {character}, which no bottle code does. Type it anew."),
+    "code-check": N_("{value} is no bottle code: its last character does not fit. Type it anew."),
     "unknown-bottle": N_("No bottle {value} is known here. Check the code, or send and fetch."),
     "unknown-number": N_(
         "No bottle was received under the number {value}. Check it against the receipt list."

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 from fieldapp.domain.codes import BadCode, normalise
 from fieldapp.domain.facts import ResultReported
 from fieldapp.reading.cells import Cells, read_analyte, read_moment, read_plain, read_reported
-from fieldapp.reading.faults import Findings, Note
+from fieldapp.reading.faults import Findings, Note, shown
 from fieldapp.reading.part import tidy
 
 LARGEST_BYTES = 5_000_000
@@ -281,7 +281,8 @@ class _Rows:
         try:
             code = normalise(typed)
         except BadCode as fault:
-            cells.fault("bad-code", "bottle", typed, why=str(fault.values["why"]))
+            about = {key: shown(v) for key, v in fault.values.items() if key not in ("why", "code")}
+            cells.fault(f"code-{fault.values['why']}", "bottle", typed, **about)
             return ""
         if self.resolve(code, "") is None:
             cells.fault("unknown-bottle", "bottle", typed)

@@ -45,12 +45,20 @@ WAITS = ("here", "away")
 FILLS = ("line", "below", "over", "spilled")
 ANALYTES = ("lead", "copper")
 
+# Where the block says nothing: our choice.
+BEGINS = "06:00"
+FIRST_NUMBER = "L-0001"
+
 _TIME = re.compile(r"([01]\d|2[0-3]):[0-5]\d", re.ASCII)
 _HOURS = re.compile(r"\d{1,3}(\.\d{1,3})?", re.ASCII)
 _DRAW = re.compile(r"[1-9]\d?", re.ASCII)
 _LAST_DIGITS = re.compile(r"(\d+)(\D*)$", re.ASCII)
 
-A_TIME = N_("a time of day as HH:MM")
+A  # Where the block says nothing: our choice.
+BEGINS = "06:00"
+FIRST_NUMBER = "L-0001"
+
+_TIME = N_("a time of day as HH:MM")
 HOURS = N_("hours as a text such as 7.5")
 
 
@@ -114,8 +122,8 @@ class Report:
 class Script:
     """The whole rehearsal of a round file."""
 
-    begins: str = "06:00"
-    laboratory_number: str = "L-0001"
+    begins: str = BEGINS
+    laboratory_number: str = FIRST_NUMBER
     visits: Mapping[str, VisitScript] = field(default_factory=dict)
     reports: Mapping[str, Report] = field(default_factory=dict)
     results: Mapping[tuple[str, int, str], str] = field(default_factory=dict)
@@ -201,8 +209,8 @@ def _script(part: Part, planned: RoundFile) -> Script:
         results.update(_result(one, draws, reports))
     read = [_visit(one, visits) for one in _blocks(part, "visits")]
     return Script(
-        begins=_time(part, "begins") or Script.begins,
-        laboratory_number=part.text("laboratory_number", optional=True) or Script.laboratory_number,
+        begins=_time(part, "begins") or BEGINS,
+        laboratory_number=part.text("laboratory_number", optional=True) or FIRST_NUMBER,
         visits={one.visit: one for one in read},
         reports=reports,
         results=results,
@@ -252,9 +260,11 @@ def _hours(text: str) -> Decimal | None:
 
 
 def _fills(part: Part) -> dict[int, str]:
-    block = part.block("fill") if part.has("fill") else None
     fills: dict[int, str] = {}
-    for draw in block.value if block else ():
+    block = part.block("fill") if part.has("fill") else None
+    if block is None:
+        return fills
+    for draw in block.value:
         if _DRAW.fullmatch(draw):
             fills[int(draw)] = block.word(draw, FILLS)
         else:

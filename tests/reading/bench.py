@@ -5,6 +5,8 @@ import json
 import string
 from typing import Any
 
+import pytest
+
 from fieldapp.places import shipped
 from fieldapp.reading import BadFile, FileFault, RoundFile, read_round
 from fieldapp.reading.faults import SENTENCES
@@ -104,12 +106,10 @@ def assert_whole(fault: FileFault) -> None:
 
 def faults_of(data: bytes, name: str = NAME) -> set[tuple[str, str]]:
     """Return kind and path of every fault of a file that must be refused."""
-    try:
+    with pytest.raises(BadFile) as bad:
         read_round(data, name)
-    except BadFile as bad:
-        assert all(fault.file == name for fault in bad.faults)
-        return {(fault.kind, fault.path) for fault in bad.faults}
-    raise AssertionError("the file was taken")
+    assert {fault.file for fault in bad.value.faults} == {name}
+    return {(fault.kind, fault.path) for fault in bad.value.faults}
 
 
 def clean_day() -> bytes:
