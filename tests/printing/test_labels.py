@@ -362,6 +362,12 @@ def test_a_crowded_label_still_shows_code_and_preservative():
             assert "Acid inside" in text
 
 
+def test_words_too_long_for_any_size_are_cut_before_the_volume():
+    for roll in ROLLS:
+        text = text_of(printed([label(a_code(), draw=0, draw_words="W" * 90)], roll=roll))
+        assert re.search(r"W+… · 1 000 mL", text)
+
+
 def test_a_site_code_that_cannot_be_shown_is_refused_and_not_changed():
     with pytest.raises(BadLabel, match="“Ω-12”"):
         printed([label(a_code(), site="Ω-12")])
