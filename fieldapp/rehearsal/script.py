@@ -54,11 +54,7 @@ _HOURS = re.compile(r"\d{1,3}(\.\d{1,3})?", re.ASCII)
 _DRAW = re.compile(r"[1-9]\d?", re.ASCII)
 _LAST_DIGITS = re.compile(r"(\d+)(\D*)$", re.ASCII)
 
-A  # Where the block says nothing: our choice.
-BEGINS = "06:00"
-FIRST_NUMBER = "L-0001"
-
-_TIME = N_("a time of day as HH:MM")
+A_TIME = N_("a time of day as HH:MM")
 HOURS = N_("hours as a text such as 7.5")
 
 
