@@ -70,16 +70,17 @@ def ask(replica: Replica, run: Run) -> dict[str, Any]:
         own = replica.hooks.own_logs(db)
         heads = {log: ledger.head(db, log) for log in own}
         got = ledger.cursors(db)
-        left, push = run.most, []
+        left, size, push = run.most, run.most_bytes, []
         for log in own:
-            if log in run.blocked or log in run.fetch or left < 1:
+            if log in run.blocked or log in run.fetch or left < 1 or size < 1:
                 continue
             first = _first_to_push(db, run, log)
-            entries = ledger.read(db, log, first, left, run.most_bytes)
+            entries = ledger.read(db, log, first, left, size)
             if entries:
                 left -= len(entries)
+                size -= sum(len(entry.body) + len(entry.private or b"") for entry in entries)
                 push.append({"log": log, "first": first, "entries": wire.pack_all(entries)})
-        returned = _give_back(db, run, left)
+        returned = _give_back(db, run, left if size > 0 else 0)
         have = {
             scope: {log: wire.pack_head(place) for log, place in got.get(scope, {}).items()}
             for scope in replica.hooks.scopes(db)

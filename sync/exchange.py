@@ -59,7 +59,7 @@ def run(
     moved = True
     while moved and not (stop is not None and stop()):
         request, answer = _exchange(replica, to, state)
-        moved = device.take(replica, state, request, answer)
+        moved = device.take(replica, state, request, answer) | _note_clock(replica)
         if progress is not None:
             _tell(replica, state, progress)
         if device.done(replica, state):
@@ -92,7 +92,7 @@ def enrol(to: Peer, realm: Realm, key: DeviceKey, dev: str, code: str) -> dict[s
 
 
 def open_session(replica: Replica, to: Peer) -> None:
-    """Prove this device's key to central, keep the token, and record central's time.
+    """Prove this device's key to central, keep the token and what central's clock said.
 
     No clock of this device takes part, so one that thinks it is 1970 gets in as well.
     """
@@ -109,9 +109,7 @@ def open_session(replica: Replica, to: Peer) -> None:
     signed = {**who, "challenge": challenge, "sig": b64(hooks.key.sign(proof))}
     given = _must(_call(to, "session", signed)).body
     replica.token = _text(given, "token")
-    checked = clock_checked(_text(given, "now"), before, hooks.moment())
-    with hooks.transaction() as db:
-        hooks.write(db, "clock.checked", checked)
+    replica.checked = clock_checked(_text(given, "now"), before, hooks.moment())
 
 
 def clock_checked(central_at: str, before: Moment, after: Moment) -> dict[str, Any]:
@@ -130,6 +128,17 @@ def clock_checked(central_at: str, before: Moment, after: Moment) -> dict[str, A
         return found
     found["offset_ms"] = round(apart.total_seconds() * 1000) - rtt // 2
     return found
+
+
+def _note_clock(replica: Replica) -> bool:
+    # Only now that central's heads were taken: appended before, it would make a fork of a
+    # log that was merely restored.
+    if replica.checked is None:
+        return False
+    with replica.hooks.transaction() as db:
+        replica.hooks.write(db, "clock.checked", replica.checked)
+    replica.checked = None
+    return True
 
 
 def _exchange(

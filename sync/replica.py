@@ -108,6 +108,7 @@ class Replica:
     def __init__(self, hooks: Hooks) -> None:
         self.hooks = hooks
         self.token = ""  # of the present session with central, kept from run to run
+        self.checked: dict[str, Any] | None = None  # central's time, not yet written down
 
     @property
     def realm(self) -> Realm:

@@ -12,5 +12,5 @@ def delay(failures: int, rnd: Callable[[], float]) -> float:
     ``rnd`` returns a number from 0 to 1.
     """
     doublings = min(max(failures, 1), 16)
-    ceiling = min(LONGEST_S, SHORTEST_S * 2**doublings)
+    ceiling = min(LONGEST_S, SHORTEST_S * 2.0**doublings)
     return SHORTEST_S + (ceiling - SHORTEST_S) * rnd()
