@@ -42,6 +42,8 @@ class Due:
     until: datetime | None = None  # when a wait or run is long enough
     why: str = ""
     source: str = ""
+    says: str = ""  # for "ask", "last-use": the document's own question, plain English
+    words: dict[str, str] = field(default_factory=dict)  # answer -> the document's own word
 
 
 @dataclass(frozen=True, slots=True)
@@ -103,3 +105,4 @@ class Standing:
     earliest_draw: datetime | None = None
     stopped: str = ""  # the answer that ends the visit (filter in place …): kind of outcome
     answers: dict[str, str] = field(default_factory=dict)  # question -> answer in force
+    beyond: tuple[str, ...] = ()  # ids of steps that this program reads but cannot walk yet

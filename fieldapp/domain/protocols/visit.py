@@ -1,0 +1,177 @@
+"""One visit as the engine looks at it: its stations, what is recorded, and the reading now."""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from datetime import timedelta
+
+from fieldapp.domain.facts import TapOpened, VisitPlanned
+from fieldapp.domain.protocols.model import Protocol
+from fieldapp.domain.protocols.seen import Answer, Noted, Seen, Use
+from fieldapp.domain.protocols.stations import Filling, Question, Station, Waste, asks, stations
+from fieldapp.domain.protocols.steps import Ask, Run
+from fieldapp.domain.protocols.stood import Stood, Uses
+from fieldapp.domain.recorded import Reading, Recorded
+from fieldapp.domain.stand import Mark, between
+
+ANOTHER_DAY = "another-day"
+STAND_DOUBT, STAND_LONG = "stand-doubt", "stand-long"
+WAIT, DRAW_NOW = "wait", "draw-now"
+
+
+@dataclass(frozen=True, slots=True)
+class Visit:
+    """What ``where`` hands from one of its parts to the next; made once, changed by none."""
+
+    protocol: Protocol
+    stations: tuple[Station, ...]
+    asks: Mapping[str, Ask]  # every question of the document, those the round answered too
+    seen: Seen
+    given: tuple[Answer, ...]
+    answers: Mapping[str, Answer]
+    purposes: Mapping[int, str]
+    visit: str
+    now: Reading
+    bound: timedelta
+
+    @property
+    def fillings(self) -> list[Filling]:
+        """The stations at which something is filled, in order."""
+        return [station for station in self.stations if isinstance(station, Filling)]
+
+    @property
+    def kept(self) -> tuple[int, ...]:
+        """The draws of the tap's own water that go into bottles."""
+        return tuple(n for one in self.fillings if not one.blank for n in one.kept)
+
+    @property
+    def questions(self) -> dict[str, Question]:
+        """The questions of the visit by their name."""
+        return {one.step.question: one for one in self.stations if isinstance(one, Question)}
+
+    def outcome(self, given: Answer) -> str:
+        """Return the outcome with which an answer ends the visit, empty if it does not."""
+        if given.question == STAND_LONG:
+            return ANOTHER_DAY if given.answer == ANOTHER_DAY else ""
+        ask = self.asks.get(given.question)
+        return ask.stops_if.get(given.answer, "") if ask else ""
+
+    def stood(self, filling: Filling) -> Stood | None:
+        """Return the stand before those draws as it is known now, what was told late included."""
+        told = self.stands_told(filling)
+        return told[-1] if told else None
+
+    def stands_told(self, filling: Filling) -> list[Stood]:
+        """Return the stand as believed at the draw, then after each use told later.
+
+        Before the draw there is one at most, and it ends now.
+        """
+        began = self.seen.began(filling.draws)
+        others = [use for use in self.seen.uses if not set(use.draws) & set(filling.draws)]
+        uses = Uses()
+        if began is None:
+            for use in others:
+                uses.add(use)
+            mark = Mark(self.now.at, self.now.mono, self.now.boot)
+            return _some(uses.stood(self.now.at, mark, self.bound))
+        for use in others:
+            if use.position < began.position and not _after(use, began):
+                uses.add(use)
+        found = _some(uses.stood(began.at, began.mark, self.bound))
+        for use in _told_late(others, began):
+            uses.add(use)
+            found += _some(uses.stood(began.at, began.mark, self.bound))
+        return found
+
+    def excused(self, kinds: Sequence[str], steps: Sequence[str], after: int) -> bool:
+        """Say whether a person stated one of those deviations for such a step since then."""
+        return any(
+            one.position > after and one.fact.deviation in kinds and one.fact.step in (*steps, "")
+            for one in self.seen.stated
+        )
+
+    def answered_since(self, question: str, position: int) -> str:
+        """Return the answer in force, empty if it was given before that position."""
+        found = self.answers.get(question)
+        return found.answer if found and found.position > position else ""
+
+    def ran_enough(self, step: Run, before: Noted | None) -> bool:
+        """Say whether the water ran to waste long enough before that fact."""
+        started: Noted | None = None
+        for one in self.seen.runs.get(step.id, ()):
+            if before and one.order > before.order:
+                break
+            if one.fact.kind == "run.started":
+                started = one
+            elif started and _ran(started, one) >= step.minimum:
+                return True
+        return False
+
+
+def visit_of(
+    protocol: Protocol,
+    plan: VisitPlanned,
+    recorded: Sequence[Recorded],
+    now: Reading,
+    *,
+    keep_poured: bool,
+    offset_bound: timedelta,
+    preset: Mapping[str, str],
+) -> Visit:
+    """Lay out the visit's stations and gather what is recorded of it."""
+    planned = {**preset, **{name: str(one) for name, one in (plan.answers or {}).items()}}
+    given = tuple(Answer(-1, name, answer) for name, answer in planned.items())
+    seen = Seen(recorded, plan.visit)
+    return Visit(
+        protocol=protocol,
+        stations=stations(protocol, plan, planned, keep_poured=keep_poured),
+        asks=asks(protocol),
+        seen=seen,
+        given=given,
+        answers=seen.in_force(given),
+        purposes={int(one["draw"]): str(one.get("purpose", "")) for one in plan.draws},
+        visit=plan.visit,
+        now=now,
+        bound=offset_bound,
+    )
+
+
+def running(visit: Visit, draw: int) -> bool:
+    """Say whether the tap was opened for that draw and not closed since."""
+    taps = visit.seen.taps.get(draw, [])
+    return bool(taps) and isinstance(taps[-1].fact, TapOpened)
+
+
+def over(visit: Visit, waste: Waste) -> bool:
+    """Say whether water need not run to waste any more."""
+    began = visit.seen.began(waste.before)
+    excused = visit.excused(("run-short",), (waste.step.id,), -1)
+    return began is not None or excused or visit.ran_enough(waste.step, None)
+
+
+def _after(use: Use, began: Noted) -> bool:
+    """Say whether water ran only after a draw whose time was stated.
+
+    Of a draw that was pressed, a use told before it cannot be later: that is a contradiction.
+    """
+    return began.mark is None and use.earliest is not None and use.earliest > began.at
+
+
+def _told_late(uses: Sequence[Use], began: Noted) -> list[Use]:
+    """Return what people told after the draw about water that ran before it."""
+    return [
+        replace(use, latest=min(use.latest, began.at))
+        for use in uses
+        if use.position > began.position
+        and use.basis != "pressed"
+        and (use.earliest is None or use.earliest < began.at)
+    ]
+
+
+def _ran(start: Noted, end: Noted) -> timedelta:
+    if start.mark and end.mark:
+        return between(start.mark, end.mark).shortest
+    return end.at - start.at
+
+
+def _some(stood: Stood | None) -> list[Stood]:
+    return [stood] if stood else []
