@@ -247,8 +247,13 @@ class _View:
     @property
     def fell(self) -> bool:
         """Say whether central no longer holds what it once acknowledged."""
+        return self.old is not None and (self.shorter or not self.same)
+
+    @property
+    def shorter(self) -> bool:
+        """Say whether central's log ends before what it acknowledged: it was restored."""
         reach = self.there.seq if self.there else 0
-        return self.old is not None and (reach < self.old.seq or not self.same)
+        return self.old is not None and reach < self.old.seq
 
     @property
     def changes(self) -> bool:
@@ -263,6 +268,7 @@ def _settle(replica: Replica, run: Run, db: sqlite3.Connection, view: _View) -> 
     before = 0 if view.old is None or view.fell else view.old.seq
     if view.fell:
         ledger.drop_acknowledgement(db, view.log)
+    if view.shorter:
         run.regressed.add(view.log)
     if view.note is not None:
         ledger.keep_acknowledgement(db, view.note)

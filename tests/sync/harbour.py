@@ -186,7 +186,9 @@ class Node:
 
     def bytes_held(self) -> set[bytes]:
         """Return the hashes of all entries held anywhere in this node."""
-        query = "SELECT hash FROM entry UNION SELECT hash FROM branch UNION SELECT hash FROM borrowed"
+        query = (
+            "SELECT hash FROM entry UNION SELECT hash FROM branch UNION SELECT hash FROM borrowed"
+        )
         return {h for (h,) in self.db.execute(query)}
 
     def snapshot(self) -> bytes:
