@@ -10,6 +10,7 @@ from fieldapp.domain.codes import new_code
 from fieldapp.domain.errors import RuleBroken, Unknown
 from fieldapp.domain.facts import (
     BottleIssued,
+    BottleVoided,
     DeviceGranted,
     EntryWithdrawn,
     Fact,
@@ -64,9 +65,21 @@ def grants_for(pages: Pages, facts: Iterable[Fact]) -> list[Fact]:
 
 
 def withdrawals(pages: Pages, dropped: Iterable[Fact]) -> list[Fact]:
-    """Return what takes a dropped visit, route or person out of the plan."""
+    """Return what takes a dropped visit, route or person out of the plan.
+
+    The codes printed for a dropped visit are voided: no bottle is expected from it any more.
+    """
     made: list[Fact] = []
     for given in dropped:
+        if isinstance(given, VisitPlanned):
+            made += [
+                BottleVoided(bottle=bottle["bottle"], why="visit-dropped")
+                for bottle in pages.rows(
+                    "SELECT bottle FROM p_bottle WHERE printed_for = ? AND filled = 0"
+                    " AND received_at = '' AND voided = ''",
+                    (given.visit,),
+                )
+            ]
         subject = given.subjects()
         for entry in pages.story(subject[0]) if subject else []:
             if entry.fact == given and entry.hash not in pages.gone([entry.hash]):

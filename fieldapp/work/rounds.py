@@ -73,7 +73,7 @@ def _decide(pages: Pages, _reading: Reading, found: RoundFile, amend: bool) -> D
             "round": found.round.round,
             "known": known,
             "facts": len(wanted),
-            "changes": [line(change) for change in changes],
+            "changes": list(dict.fromkeys(line(change) for change in changes)),
             "amended": amend,
         },
     )

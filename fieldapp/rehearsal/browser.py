@@ -1,0 +1,165 @@
+"""A browser of the standard library: opens a page, reads its forms, fills and posts them.
+
+It sees what a person with no scripts sees. A form it must press carries ``data-main``.
+"""
+
+from dataclasses import dataclass, field
+from html.parser import HTMLParser
+from http.cookiejar import CookieJar, DefaultCookiePolicy
+from urllib import error, parse, request
+
+VOID = {"input", "img", "br", "hr", "link", "meta", "area", "base", "col", "source", "wbr"}
+
+
+class Trouble(Exception):
+    """A page that answered with an error, or without what the walker needs on it."""
+
+
+@dataclass
+class Form:
+    """One form: where it goes, its hidden and typed fields, its choices and buttons."""
+
+    action: str
+    method: str
+    attributes: dict[str, str]
+    fields: dict[str, str] = field(default_factory=dict)
+    choices: dict[str, list[str]] = field(default_factory=dict)
+    buttons: list[dict[str, str]] = field(default_factory=list)
+    typed: list[str] = field(default_factory=list)
+
+    def values(self, name: str) -> list[str]:
+        """Return the values that name may take, by choice or by button."""
+        pressed = [b.get("value", "") for b in self.buttons if b.get("name") == name]
+        return [*self.choices.get(name, []), *pressed]
+
+
+@dataclass
+class Page:
+    """A page as it was answered."""
+
+    url: str
+    code: int
+    forms: list[Form]
+    links: list[dict[str, str]]
+    marks: dict[str, str]
+    text: str
+
+    def main(self) -> Form:
+        """Return the form of the way on."""
+        found = [form for form in self.forms if "data-main" in form.attributes]
+        if len(found) != 1:
+            raise Trouble(f"{self.url} has {len(found)} forms for the way on: {self.text[:300]}")
+        return found[0]
+
+    def form(self, ending: str) -> Form:
+        """Return the form that posts to an address with that ending."""
+        for form in self.forms:
+            if parse.urlsplit(form.action).path.endswith(ending):
+                return form
+        raise Trouble(f"{self.url} has no form for {ending}: {self.text[:300]}")
+
+
+class Browser:
+    """One person's browser at one node."""
+
+    def __init__(self, root: str) -> None:
+        self.root = root.rstrip("/")
+        jar = CookieJar(policy=DefaultCookiePolicy(allowed_domains=["127.0.0.1"]))
+        self._opener = request.build_opener(
+            request.HTTPCookieProcessor(jar), request.ProxyHandler({})
+        )
+        self.presses = 0
+
+    def open(self, path: str) -> Page:
+        """Open a page by its path or address."""
+        return self._ask(parse.urljoin(self.root + "/", path), None)
+
+    def press(self, page: Page, form: Form, given: dict[str, str] | None = None) -> Page:
+        """Fill the form as given, everything else as it stands, and post it."""
+        sent = {**form.fields, **(given or {})}
+        self.presses += 1
+        return self._ask(parse.urljoin(page.url, form.action), parse.urlencode(sent).encode())
+
+    def _ask(self, url: str, data: bytes | None) -> Page:
+        try:
+            with self._opener.open(request.Request(url, data=data), timeout=30) as answer:
+                return read_page(answer.geturl(), answer.status, answer.read().decode())
+        except error.HTTPError as fault:
+            page = read_page(url, fault.code, fault.read().decode("utf-8", "replace"))
+            raise Trouble(f"{url} answered {fault.code}: {page.text[:400]}") from fault
+        except OSError as fault:
+            raise Trouble(f"{url} does not answer: {fault}") from fault
+
+
+def read_page(url: str, code: int, html: str) -> Page:
+    """Return a page's forms, links and marks (``data-*`` anywhere in its main part)."""
+    reader = _Reader()
+    reader.feed(html)
+    return Page(url, code, reader.forms, reader.links, reader.marks, " ".join(reader.words))
+
+
+class _Reader(HTMLParser):
+    def __init__(self) -> None:
+        super().__init__()
+        self.forms: list[Form] = []
+        self.links: list[dict[str, str]] = []
+        self.marks: dict[str, str] = {}
+        self.words: list[str] = []
+        self._form: Form | None = None
+        self._select = ""
+        self._quiet = 0
+
+    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
+        given = {name: value or "" for name, value in attrs}
+        self.marks.update({n: v for n, v in given.items() if n.startswith("data-mark")})
+        if tag in ("script", "style", "svg", "head"):
+            self._quiet += 1
+        if tag == "form":
+            self._form = Form(given.get("action", ""), given.get("method", "get"), given)
+            self.forms.append(self._form)
+        elif tag == "a":
+            self.links.append(given)
+        elif self._form is not None:
+            self._take(tag, given)
+
+    def _take(self, tag: str, given: dict[str, str]) -> None:
+        form, name = self._form, given.get("name", "")
+        assert form is not None
+        if tag == "select":
+            self._select = name
+        elif tag == "option" and self._select:
+            form.choices.setdefault(self._select, []).append(given.get("value", ""))
+            if "selected" in given or self._select not in form.fields:
+                form.fields[self._select] = given.get("value", "")
+        elif tag == "button":
+            form.buttons.append(given)
+        elif tag == "textarea" and name:
+            form.fields.setdefault(name, "")
+        elif tag == "input" and name:
+            self._take_input(form, name, given)
+
+    @staticmethod
+    def _take_input(form: Form, name: str, given: dict[str, str]) -> None:
+        kind = given.get("type", "text")
+        if kind in ("radio", "checkbox"):
+            form.choices.setdefault(name, []).append(given.get("value", "on"))
+            if "checked" in given:
+                form.fields[name] = given.get("value", "on")
+        elif kind in ("submit", "image"):
+            form.buttons.append(given)
+        else:
+            form.fields[name] = given.get("value", "")
+            if kind != "hidden":
+                form.typed.append(name)
+
+    def handle_endtag(self, tag: str) -> None:
+        if tag == "form":
+            self._form = None
+        elif tag == "select":
+            self._select = ""
+        elif tag in ("script", "style", "svg", "head"):
+            self._quiet -= 1
+
+    def handle_data(self, data: str) -> None:
+        if not self._quiet and data.strip():
+            self.words.append(data.strip())
