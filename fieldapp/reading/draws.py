@@ -8,8 +8,6 @@ from fieldapp.reading.part import Part
 
 PURPOSES = ("compliance", "investigation", "request", "blank", "duplicate")
 CONTROLS = ("blank", "duplicate")
-# What the step engine adds to a visit by itself; any other control needs a step of its protocol.
-WALKED_CONTROLS = ("blank",)
 MOST_DRAWS = 99
 
 
@@ -29,6 +27,8 @@ def read_draws(
         kind = one.text("kind", optional=True)
         if number and number in named:
             one.fault("draw-twice", "draw", number)
+        if purpose == "blank" and any(drawn["purpose"] == "blank" for drawn in draws.values()):
+            one.fault("blank-twice", "purpose", purpose)
         named.add(number)
         if number and purpose and _allowed(one, protocol, number, purpose, kind, keep_poured):
             extra = {"kind": kind} if purpose in CONTROLS else {}
@@ -91,8 +91,6 @@ def _control_allowed(
     elif protocol and number in kinds:
         values = {"draw": number, "right": kinds[number], "last": max(kinds)}
         one.fault("control-number", "draw", purpose, protocol=protocol.id, **values)
-    elif protocol and purpose not in WALKED_CONTROLS:
-        one.fault("no-step-for", "purpose", purpose, protocol=protocol.id)
     else:
         return True
     return False

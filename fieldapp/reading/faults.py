@@ -209,7 +209,7 @@ SENTENCES: dict[str, str] = {
     "kind-clash": N_(
         "The kind {given} does not go with the purpose {value}. Give both as {right}."
     ),
-    "no-step-for": N_("{protocol} has no draw for a {value}. Leave it out."),
+    "blank-twice": N_("A visit takes one field blank. Plan this one at another visit."),
     # a table of results
     "not-a-row": N_("The row cannot be read: {says}. Check its quotation marks."),
     "no-header": N_("No header was found. The first row names the columns: {right}."),

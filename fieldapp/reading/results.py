@@ -117,7 +117,6 @@ def read_results(data: bytes, name: str, *, resolve: Resolve) -> ResultsFile:
     """
     findings = Findings(name)
     table = _table(data, findings)
-    findings.settle()
     heads = _heads(table[0], findings)
     findings.settle()
     read = _Rows(heads, findings, resolve)
@@ -137,8 +136,6 @@ def _table(data: bytes, findings: Findings) -> list[_Row]:
     """Return the rows that hold something, each with its number; the first is the header."""
     text = _decoded(data, findings)
     rows: list[_Row] = []
-    if text is None:
-        return rows
     try:
         for row, cells in _records(text):
             if any(cells):
@@ -146,6 +143,9 @@ def _table(data: bytes, findings: Findings) -> list[_Row]:
     except csv.Error as fault:
         row = rows[-1][0] + 1 if rows else 1
         findings.add("not-a-row", row=row, values={"says": str(fault)})
+    if not rows and not findings.faults:
+        findings.add("empty")
+    findings.settle()
     return rows
 
 
@@ -167,11 +167,12 @@ def _column(heading: str) -> str:
     return next((column for column, names in COLUMNS.items() if plain.rstrip(".") in names), "")
 
 
-def _decoded(data: bytes, findings: Findings) -> str | None:
+def _decoded(data: bytes, findings: Findings) -> str:
+    """Return the text of the file, empty with a fault where it is none."""
     fault = _no_text(data)
     if fault:
         findings.add(fault[0], values=fault[1])
-        return None
+        return ""
     try:
         return data.decode("utf-8-sig")
     except UnicodeDecodeError:
@@ -181,7 +182,7 @@ def _decoded(data: bytes, findings: Findings) -> str | None:
     except UnicodeDecodeError as wrong:
         line = data.count(b"\n", 0, wrong.start) + 1
         findings.add("encoding", values={"line": line})
-        return None
+        return ""
     findings.note("not-utf-8")
     return text
 

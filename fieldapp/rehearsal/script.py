@@ -11,10 +11,11 @@ The block, all of it optional (times are local to the round, ``HH:MM``)::
         "waits": "away",                  "away": leave and come back, "here": stay (the default)
         "last_use": {"at": "22:30", "exact": "about", "where": "bath"},
                                           the latest 22:30 before the arrival; or
-                    {"hours_before": "7.5", "exact": "at", "where": "this tap"}
+                    {"hours_before": "7.5", "exact": "at", "where": "this-tap"}
                     {"at": "22:00", "to": "23:00", "exact": "between", "where": "bath"}
-                    {"exact": "unknown", "where": "this tap"}
-        "answers": {"filter": "no"},      only where not the expected answer
+                    {"exact": "unknown", "where": "this-tap"}
+        "answers": {"filter": "bypassed"},
+                                          only where not the first, expected answer
         "fill": {"1": "below"}            by draw, only where not "line"
       }],
       "reports": [{"analyte": "lead", "unit": "ug/L", "detection": "0.3", "reporting": "1",
@@ -26,159 +27,35 @@ A visit that the block does not name was last used eight hours before the arriva
 is as expected. A draw without a result stays without one.
 """
 
-import csv
-import io
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass, field
-from datetime import UTC, date, datetime, timedelta
 from decimal import Decimal
 
-from fieldapp.domain.timetext import to_utc, zone_named
-from fieldapp.reading.faults import Findings, Note
+from fieldapp.commands.kitchen import EXACT, WHERE
+from fieldapp.domain.protocols import read_protocol
+from fieldapp.domain.protocols.parts import RESERVED
+from fieldapp.domain.protocols.stations import DIFFERENT
+from fieldapp.domain.protocols.steps import LAST_USE, Ask, Look
+from fieldapp.reading.faults import Findings
 from fieldapp.reading.part import Part, read_json
 from fieldapp.reading.rounds import RoundFile
+from fieldapp.rehearsal.day import BEGINS, FIRST_NUMBER
+from fieldapp.rehearsal.day import LastUse as LastUse
+from fieldapp.rehearsal.day import Report as Report
+from fieldapp.rehearsal.day import Script as Script
+from fieldapp.rehearsal.day import VisitScript as VisitScript
 from fieldapp.words import N_
 
-EXACT = ("at", "about", "between", "unknown")
 WAITS = ("here", "away")
 FILLS = ("line", "below", "over", "spilled")
 ANALYTES = ("lead", "copper")
 
-# Where the block says nothing: our choice.
-BEGINS = "06:00"
-FIRST_NUMBER = "L-0001"
-
 _TIME = re.compile(r"([01]\d|2[0-3]):[0-5]\d", re.ASCII)
 _HOURS = re.compile(r"\d{1,3}(\.\d{1,3})?", re.ASCII)
 _DRAW = re.compile(r"[1-9]\d?", re.ASCII)
-_LAST_DIGITS = re.compile(r"(\d+)(\D*)$", re.ASCII)
 
 A_TIME = N_("a time of day as HH:MM")
 HOURS = N_("hours as a text such as 7.5")
-
-
-@dataclass(frozen=True, slots=True)
-class LastUse:
-    """What the resident says of the last use of water.
-
-    ``at`` and ``to`` are times of day, or else ``hours_before`` counts from the arrival.
-    """
-
-    exact: str = "at"
-    where: str = "this tap"
-    at: str = ""
-    to: str = ""
-    hours_before: Decimal | None = Decimal(8)
-
-    def moments(self, arrival: datetime, zone: str) -> tuple[datetime, datetime] | None:
-        """Return from when to when, in UTC, both the same unless *between*; None of unknown.
-
-        ``arrival`` is aware; a time of day means its latest occurrence before that.
-        """
-        if self.exact == "unknown":
-            return None
-        if self.hours_before is not None and not self.at:
-            milliseconds = int(self.hours_before * 3_600_000)
-            moment = arrival.astimezone(UTC) - timedelta(milliseconds=milliseconds)
-            return moment, moment
-        latest = _latest(self.to or self.at, arrival, zone)
-        return _latest(self.at, latest, zone), latest
-
-
-@dataclass(frozen=True, slots=True)
-class VisitScript:
-    """What happens at one visit, as far as it is not as expected."""
-
-    visit: str
-    arrives: str = ""
-    waits: str = "here"
-    last_use: LastUse = LastUse()
-    answers: Mapping[str, str] = field(default_factory=dict)
-    fill: Mapping[int, str] = field(default_factory=dict)
-
-    def fill_of(self, draw: int) -> str:
-        """Return how full the bottle of that draw got."""
-        return self.fill.get(draw, "line")
-
-
-@dataclass(frozen=True, slots=True)
-class Report:
-    """How the laboratory reports one analyte: unit, limits, method, day."""
-
-    analyte: str
-    unit: str
-    detection: str = ""
-    reporting: str = ""
-    method: str = ""
-    analysed_at: str = ""
-
-
-@dataclass(frozen=True, slots=True)
-class Script:
-    """The whole rehearsal of a round file."""
-
-    begins: str = BEGINS
-    laboratory_number: str = FIRST_NUMBER
-    visits: Mapping[str, VisitScript] = field(default_factory=dict)
-    reports: Mapping[str, Report] = field(default_factory=dict)
-    results: Mapping[tuple[str, int, str], str] = field(default_factory=dict)
-    notes: tuple[Note, ...] = ()
-
-    def visit(self, visit: str) -> VisitScript:
-        """Return what happens at that visit."""
-        return self.visits.get(visit, VisitScript(visit))
-
-    def begins_at(self, day: date, zone: str) -> datetime:
-        """Return the moment in UTC at which the day begins."""
-        return at_local(day, self.begins, zone)
-
-    def arrives_at(self, visit: str, day: date, zone: str) -> datetime | None:
-        """Return the moment in UTC before which nobody is at that door, None: at any time."""
-        arrives = self.visit(visit).arrives
-        return at_local(day, arrives, zone) if arrives else None
-
-    def number(self, place: int) -> str:
-        """Return the laboratory's number of the bottle in that place of receipt, from 0."""
-        found = _LAST_DIGITS.search(self.laboratory_number)
-        if found is None:
-            return f"{self.laboratory_number}-{place + 1}"
-        counted = str(int(found[1]) + place).zfill(len(found[1]))
-        return self.laboratory_number[: found.start()] + counted + found[2]
-
-    def results_csv(self, received: Mapping[tuple[str, int], tuple[str, str]]) -> str:
-        """Return the laboratory's file: a row a result of a bottle that was received.
-
-        ``received`` holds code and laboratory number (one may be empty) by visit and draw.
-        """
-        table = io.StringIO()
-        writer = csv.writer(table, lineterminator="\n")
-        writer.writerow(RESULTS_HEADER)
-        for (visit, draw, analyte), value in self.results.items():
-            if (visit, draw) in received:
-                report = self.reports[analyte]
-                limits = (report.detection, report.reporting)
-                row = (analyte, value, report.unit, *limits, report.method, report.analysed_at)
-                writer.writerow((*received[visit, draw], *row))
-        return table.getvalue()
-
-
-RESULTS_HEADER = (
-    "bottle",
-    "laboratory_number",
-    "analyte",
-    "value",
-    "unit",
-    "detection",
-    "reporting",
-    "method",
-    "analysed_at",
-)
-
-
-def at_local(day: date, time: str, zone: str) -> datetime:
-    """Return the moment in UTC of a local time of day; of two such moments the first."""
-    return to_utc(f"{day.isoformat()}T{time}", zone, fold=0)
 
 
 def read_script(data: bytes, path_name: str, planned: RoundFile) -> Script:
@@ -197,7 +74,8 @@ def read_script(data: bytes, path_name: str, planned: RoundFile) -> Script:
 
 def _script(part: Part, planned: RoundFile) -> Script:
     part.only("begins", "laboratory_number", "visits", "reports", "results")
-    visits = {visit.visit for visit in planned.visits}
+    asked = _asked(planned)
+    visits = {visit.visit: asked.get(visit.protocol, {}) for visit in planned.visits}
     draws = {(visit.visit, draw["draw"]) for visit in planned.visits for draw in visit.draws}
     reports = {one.analyte: one for one in map(_report, _blocks(part, "reports"))}
     results: dict[tuple[str, int, str], str] = {}
@@ -218,7 +96,20 @@ def _blocks(part: Part, key: str) -> list[Part]:
     return list(part.blocks(key)) if part.has(key) else []
 
 
-def _visit(part: Part, known: set[str]) -> VisitScript:
+def _asked(planned: RoundFile) -> dict[str, dict[str, tuple[str, ...]]]:
+    """Return by protocol what it asks, each question with its answers."""
+    asked: dict[str, dict[str, tuple[str, ...]]] = {}
+    for kept in planned.protocols:
+        questions = asked.setdefault(kept.protocol, {})
+        for step in read_protocol(kept.toml).steps:
+            if isinstance(step, Ask) and step.question != LAST_USE:
+                questions[step.question] = step.answers
+            elif isinstance(step, Look):
+                questions[step.at] = (step.expect, DIFFERENT)
+    return asked
+
+
+def _visit(part: Part, known: Mapping[str, Mapping[str, tuple[str, ...]]]) -> VisitScript:
     part.only("id", "arrives", "waits", "last_use", "answers", "fill")
     visit = part.id("id")
     if visit and visit not in known:
@@ -229,7 +120,7 @@ def _visit(part: Part, known: set[str]) -> VisitScript:
         arrives=_time(part, "arrives"),
         waits=part.word("waits", WAITS) if part.has("waits") else "here",
         last_use=_last_use(use) if use else LastUse(),
-        answers=_texts(part, "answers"),
+        answers=_answers(part, known.get(visit, {})),
         fill=_fills(part),
     )
 
@@ -247,7 +138,7 @@ def _last_use(part: Part) -> LastUse:
     for key in ("at", "to"):
         if exact == "between" and not part.has(key):
             part.fault("missing", key, called=key, right=A_TIME)
-    where = part.text("where", optional=True) or "this tap"
+    where = part.word("where", WHERE) if part.has("where") else "this-tap"
     return LastUse(exact, where, at, to if exact == "between" else "", _hours(hours))
 
 
@@ -268,9 +159,19 @@ def _fills(part: Part) -> dict[int, str]:
     return fills
 
 
-def _texts(part: Part, key: str) -> dict[str, str]:
-    block = part.block(key) if part.has(key) else None
-    return {name: block.text(name) for name in block.value} if block else {}
+def _answers(part: Part, asked: Mapping[str, tuple[str, ...]]) -> dict[str, str]:
+    answers: dict[str, str] = {}
+    block = part.block("answers") if part.has("answers") else None
+    if block is None:
+        return answers
+    for question in block.value:
+        if question in asked:
+            answers[question] = block.word(question, asked[question])
+        elif question in RESERVED:
+            answers[question] = block.text(question)
+        else:
+            block.fault("word", "", question, right=tuple(asked))
+    return answers
 
 
 def _report(part: Part) -> Report:
@@ -302,10 +203,3 @@ def _time(part: Part, key: str) -> str:
         part.fault("form", key, text, right=A_TIME)
         return ""
     return text
-
-
-def _latest(time: str, before: datetime, zone: str) -> datetime:
-    """Return the latest moment at or before ``before`` at which clocks showed ``time``."""
-    today = before.astimezone(zone_named(zone)).date()
-    days = (today - timedelta(days=n) for n in range(3))
-    return next(at for at in (at_local(day, time, zone) for day in days) if at <= before)

@@ -300,6 +300,8 @@ def test_a_row_cut_short_lacks_what_it_needs():
     [
         (b"", "empty"),
         (b"\r\n  \r\n", "empty"),
+        (b",", "empty"),
+        (b";;\n\xa0;", "empty"),
         (b"PK\x03\x04rest", "not-a-table"),
         (b"%PDF-1.7", "not-a-table"),
         (HEAD.encode("utf-16"), "not-a-table"),

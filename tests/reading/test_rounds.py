@@ -98,10 +98,10 @@ WRONG: list[tuple[str, Any, str, str]] = [
     (f"{BLANK}.purpose", "compliance", "kind-clash", "routes[0].visits[1].draws[1].purpose"),
     (f"{BLANK}.draw", 1, "control-number", "routes[0].visits[1].draws[1].draw"),
     (
-        BLANK,
-        {"draw": 2, "kind": "duplicate", "purpose": "duplicate"},
-        "no-step-for",
-        "routes[0].visits[1].draws[1].purpose",
+        f"{PAIR}.0",
+        {"draw": 6, "kind": "duplicate", "purpose": "duplicate"},
+        "draw-left-out",
+        "routes[0].visits[0].draws",
     ),
 ]
 
@@ -300,6 +300,21 @@ def test_poured_litres_have_bottles_where_the_round_keeps_them():
     put(plan, "round.keep_poured", True)
     plan["routes"][0]["visits"][0]["draws"].append({"draw": 3, "purpose": "investigation"})
     assert [draw["draw"] for draw in read(plan).visits[0].draws] == [1, 3, 5]
+
+
+def test_a_visit_takes_one_field_blank():
+    plan = small()
+    more = {"draw": 3, "kind": "blank", "purpose": "blank"}
+    plan["routes"][0]["visits"][1]["draws"].append(more)
+    where = "routes[0].visits[1].draws[2].purpose"
+    assert faults_of(json.dumps(plan).encode()) == {("blank-twice", where)}
+
+
+def test_a_duplicate_takes_a_number_above_the_protocols_own():
+    plan = small()
+    more = {"draw": 6, "kind": "duplicate", "purpose": "duplicate"}
+    plan["routes"][0]["visits"][0]["draws"].append(more)
+    assert read(plan).visits[0].draws[2] == more
 
 
 def test_the_same_file_gives_the_same_facts():
