@@ -116,6 +116,21 @@ def findings_about(pages: Pages, subject: str, now: datetime) -> list[Row]:
     )
 
 
+def settlements(pages: Pages, kind: str, about: str) -> list[Recorded]:
+    """Return the settlements of findings of that kind about that subject, the oldest first.
+
+    New evidence makes a new finding; the former settlement is shown beside it.
+    """
+    rows = pages.db.execute(
+        f"SELECT f.hash FROM p_fact f WHERE f.kind = 'finding.settled' AND {facts.LIVING}"
+        " AND json_extract(f.data, '$.kind') = ? AND json_extract(f.data, '$.about') = ?"
+        " ORDER BY f.at, f.log, f.seq",
+        (kind, about),
+    )
+    found = (pages.fact(row[0], private=True) for row in rows.fetchall())
+    return [entry for entry in found if entry is not None]
+
+
 def awaited(pages: Pages, round_id: str, now: datetime) -> list[Row]:
     """Return what is still on its way and becomes a finding by time alone (R7), soonest first."""
     return pages.rows(

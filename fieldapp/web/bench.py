@@ -107,9 +107,7 @@ def _ask_for_sticker(scanned: str) -> Response | str | tuple[str, int] | tuple[R
     return _counter(answer, form={"bottle": code})
 
 
-def _refused(
-    fault: RuleBroken, form: dict[str, Any]
-) -> tuple[str, int] | tuple[Response, int]:
+def _refused(fault: RuleBroken, form: dict[str, Any]) -> tuple[str, int] | tuple[Response, int]:
     """Answer a scan that was not recorded, on the counter itself, and keep what was typed."""
     why = f"code-{fault.values['why']}" if isinstance(fault, BadCode) else fault.kind
     answer = {"word": "stop", "why": why, "values": fault.values, "scanned": form["bottle"]}
