@@ -46,7 +46,8 @@ def make(folder: Path, *, scripted: bool) -> None:
             f"{SCRIPT} lies in this folder, but only a rehearsal makes such a node. "
             f"Remove {SCRIPT} or use another folder."
         )
-    dev = "D-" + "".join(secrets.choice(ALPHABET) for _ in range(6))
+    # a rehearsal's device shows in its id, so that a real central can refuse it
+    dev = ("R-" if scripted else "D-") + "".join(secrets.choice(ALPHABET) for _ in range(6))
     write_private(folder / NODE, {
         "dev": dev, "scripted": scripted, "cookie": f"tw-{secrets.token_hex(4)}",
         "secret": secrets.token_urlsafe(32),
@@ -83,6 +84,11 @@ def key_path(folder: Path) -> Path:
 def key_name(public_key: bytes) -> str:
     """Return the key's id."""
     return key_id(public_key)
+
+
+def is_rehearsal(dev: str) -> bool:
+    """Say whether a device id is that of a rehearsal's node."""
+    return dev.startswith("R-")
 
 
 def central_of(folder: Path) -> dict[str, Any] | None:

@@ -26,8 +26,19 @@ from fieldapp.projections.summaries import text
 from fieldapp.schemas.facts import check_fact
 from fieldapp.scopes import scope_of
 from sync import ledger
-from sync.entry import Entry, Realm, b64, compose, conceal, new_log_id, unb64, verify
-from sync.errors import Refused, SyncError, Unsuitable
+from sync.adopt import carried
+from sync.entry import (
+    CARRIED,
+    Entry,
+    Realm,
+    b64,
+    compose,
+    conceal,
+    new_log_id,
+    unb64,
+    verify,
+)
+from sync.errors import BadEntry, Refused, SyncError, Unsuitable
 from sync.folder import FolderLock, check_place, read_anchors, write_anchor
 from sync.keys import DeviceKey
 from sync.replica import Moment, Pin, Replica
@@ -389,8 +400,26 @@ class Store:
         return Moment(text(now.at), now.off, now.mono, now.boot)
 
     def follow(self, db: sqlite3.Connection, entries: Sequence[Entry]) -> None:
-        """Bring the page tables after entries that were verified and kept."""
-        projections.follow(db, entries)
+        """Bring the page tables after entries that were verified and kept.
+
+        Of a carried entry the one inside counts, if its own author's signature holds.
+        """
+        projections.follow(db, [inner for entry in entries for inner in self._inner(db, entry)])
+
+    def _inner(self, db: sqlite3.Connection, entry: Entry) -> list[Entry]:
+        fields = entry.fields()
+        if fields["kind"] != CARRIED:
+            return [entry]
+        try:
+            inner = carried(REALM, fields)
+            said = inner.fields()
+            public = self.public_key(db, str(said["dev"]), str(said["key"]))
+            if public is None:
+                return [entry]
+            verify(REALM, inner, public)
+        except (BadEntry, KeyError, ValueError):
+            return [entry]
+        return [entry, inner]
 
     def public_key(self, db: sqlite3.Connection, dev: str, key_id: str) -> bytes | None:
         """Return the enrolled public key of a device, this one's and central's included."""

@@ -41,7 +41,7 @@ VOCABULARY: dict[tuple[str, str], tuple[str, ...]] = {
 _BY_NAME: dict[str, Any] = {
     "bottle": CODE, "done_at": UTC_TEXT, "learned_at": UTC_TEXT, "day": DAY, "value": DECIMAL,
     "detection": DECIMAL, "reporting": DECIMAL,
-    "basis": validate.OneOf(("stated", "paper")), "toml": LONG, "body": LONG,
+    "basis": validate.OneOf(("stated", "paper")), "toml": LONG, "orig": LONG, "deflated": LONG,
 }  # fmt: skip
 
 
@@ -105,4 +105,4 @@ def _checks(kind: str, key: str, required: bool) -> list[Any]:
     return [validate.Length(max=200)] if not required or key in ("from", "to") else []
 
 
-_EMPTY_ALLOWED = {("result.reported", "value"), ("log.carried", "body")}
+_EMPTY_ALLOWED = {("result.reported", "value")}

@@ -19,12 +19,17 @@ class LogOpened(Fact):
 
 @fact("log.carried", place="ledger", reach=ALL)
 class LogCarried(Fact):
-    """An entry of a branch that central does not hold, carried whole into the new log."""
+    """An entry of a branch that central does not hold, carried whole into the new log.
 
-    body: str
+    ``orig`` is its text, or ``deflated`` where that is long; ``priv`` labels its private part
+    and ``scope`` repeats its words, so that it is pulled like the entry inside.
+    """
+
     sig: str
-    log: str = ""
-    private: str = ""
+    orig: str = ""
+    deflated: str = ""
+    scope: tuple[str, ...] = ()
+    priv: Mapping[str, Any] | None = None
 
 
 @fact("clock.checked", place="ledger", reach=ALL)
