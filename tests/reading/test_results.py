@@ -189,6 +189,11 @@ def test_either_name_of_a_bottle_is_enough():
     assert (one.bottle, one.laboratory_number) == (ONE, "")
 
 
+def test_a_laboratory_may_report_down_to_its_detection_limit():
+    (one,) = read(row(detection="1", reporting="1")).rows
+    assert (one.detection, one.reporting) == ("1", "1")
+
+
 def test_a_code_is_read_as_people_write_it():
     assert read(row(bottle="f8qy-4oyg-ec9")).rows[0].bottle == ONE
 

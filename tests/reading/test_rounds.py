@@ -188,7 +188,7 @@ def test_a_fault_names_the_nearest_id():
 
 
 @pytest.mark.parametrize("key", ["name", "address", "phone", "contact", "access"])
-@pytest.mark.parametrize("text", ["x" * 501 + "Crumblebee", "Crumble\u0007bee", ["Crumblebee"]])
+@pytest.mark.parametrize("text", ["Crumblebee" + "x" * 501, "Crumble\u0007bee", ["Crumblebee"]])
 def test_a_fault_never_holds_private_text(key, text):
     plan = small()
     put(plan, f"sites.0.{key}", text)
@@ -284,6 +284,13 @@ def test_a_route_in_a_month_that_does_not_count_is_noted():
     put(plan, "round.to", "2027-06-30")
     put(plan, "routes.0.day", "2027-06-01")
     assert "month-not-counted" in {note.kind for note in read(plan).notes}
+
+
+def test_a_round_may_last_one_day():
+    plan = small()
+    put(plan, "round.from", "2027-05-04")
+    put(plan, "round.to", "2027-05-04")
+    assert read(plan).routes[0].day == "2027-05-04"
 
 
 def test_a_route_may_be_empty():
