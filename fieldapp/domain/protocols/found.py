@@ -76,7 +76,7 @@ def _stands(visit: Visit) -> Iterable[Deviation]:
             believed = believed or stood
             if kind and kind not in kinds:
                 kinds.add(kind)
-                evidence = [stood.evidence, began]
+                evidence: list[Noted | str] = [stood.evidence, began]
                 yield make(kind, filling.kept, evidence, **stood.values(filling.rule))
 
 
