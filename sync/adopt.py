@@ -10,6 +10,7 @@ from sync import ledger
 from sync.encoding import b64, unb64
 from sync.entry import CARRIED, Entry, Realm, digest, scopes_of
 from sync.errors import BadEntry
+from sync.follow import follow
 from sync.ledger import Head
 from sync.replica import Replica
 from sync.wire import claim
@@ -125,6 +126,5 @@ def _keep(
             ledger.add_branch(db, entry, stated=stated, at=at, frm=frm, realm=replica.realm)
         else:
             ledger.add(db, entry, at=at, frm=frm, realm=replica.realm)
-    if fresh:
-        replica.hooks.follow(db, fresh)
+    follow(replica, db, fresh)
     return len(fresh)

@@ -14,20 +14,10 @@ from sync.acknowledgement import Acknowledgement
 from sync.encoding import b64
 from sync.entry import OPENED, Entry, scopes_of, verify
 from sync.errors import BadEntry
+from sync.follow import ODD_DATA, follow
 from sync.ledger import Head
 from sync.replica import Replica
 
-# What odd data may raise in page tables. Faults of disk and database are not among them: those
-# must end the transaction and be seen.
-ODD_DATA = (
-    ArithmeticError,
-    AttributeError,
-    LookupError,
-    TypeError,
-    ValueError,
-    RecursionError,
-    sqlite3.IntegrityError,
-)
 SAYS = {
     "gap": "Send this log from after the head that central holds.",
     "fork": "Central holds another history of this log. Take it, keep both, open a new log.",
@@ -93,7 +83,7 @@ def accept_returned(replica: Replica, dev: str, log: str, sent: list[Any]) -> li
                 scopes = scopes_of(entry.fields())
                 if ledger.borrow(db, entry, scope=scopes, at=at, frm=dev, realm=replica.realm):
                     fresh.append(entry)
-            replica.hooks.follow(db, fresh)
+            follow(replica, db, fresh)
     except ODD_DATA:
         refusals.append(Refusal(log, 0, "failed"))
     return refusals
@@ -234,7 +224,8 @@ class _Answer:
         for log in sorted({*self.asked.heads, *pushed}):
             owner = log_owner(self.db, log)
             if owner not in (None, self.dev):
-                self.refused.append(Refusal(log, 1, "not-yours"))
+                if log not in pushed:  # else it was refused with the push
+                    self.refused.append(Refusal(log, 1, "not-yours"))
                 continue
             held, theirs = ledger.head(self.db, log), self.asked.heads.get(log)
             meet = min(held.seq if held else 0, theirs.seq if theirs else 0)
@@ -384,6 +375,5 @@ def _append(replica: Replica, log: str, entries: list[Entry], dev: str) -> Refus
         new = [entry for entry in fresh if not ledger.holds(db, entry.hash)]
         for entry in fresh:
             ledger.add(db, entry, at=at, frm=dev, realm=replica.realm)
-        if new:
-            hooks.follow(db, new)
+        follow(replica, db, new)
     return None

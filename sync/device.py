@@ -19,10 +19,11 @@ from typing import Any
 from sync import ledger, wire
 from sync.acknowledgement import Acknowledgement
 from sync.adopt import adopt
-from sync.central import ODD_DATA, verified_alone
+from sync.central import verified_alone
 from sync.encoding import b64
 from sync.entry import Entry
 from sync.errors import BadEntry, NoContact, Refused
+from sync.follow import ODD_DATA, follow
 from sync.ledger import Head
 from sync.replica import Replica
 
@@ -358,8 +359,7 @@ def _borrow(replica: Replica, run: Run, scope: str, log: str, entries: list[Entr
                 for entry in entries
                 if ledger.borrow(db, entry, scope=scope, at=at, frm=frm, realm=replica.realm)
             ]
-            if fresh:
-                replica.hooks.follow(db, fresh)
+            follow(replica, db, fresh)
             ledger.set_cursor(db, scope, log, Head(last.seq, last.hash))
     except ODD_DATA as fault:
         _hold_back(run, log, fault)

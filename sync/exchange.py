@@ -174,7 +174,7 @@ def _must(answer: Answer) -> Answer:
     if answer.code == peer.OK:
         return answer
     says = str(answer.body.get("detail") or f"Central answered {answer.code}. Try again later.")
-    if answer.code >= 500:
+    if answer.code >= 500 or answer.code == peer.UNAUTHORIZED:  # a challenge or session was over
         raise NoContact(says, answer.retry_after)
     raise Refused(str(answer.body.get("title") or answer.code), says, answer.retry_after)
 

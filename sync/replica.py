@@ -59,7 +59,8 @@ class Hooks(Protocol):
     def follow(self, db: sqlite3.Connection, entries: Sequence[Entry]) -> None:
         """Bring page tables up to entries that are new to this node, in the same transaction.
 
-        It must take any verified entry: unknown kinds, odd data, any order of arrival.
+        It should take any verified entry: unknown kinds, odd data, any order of arrival. One it
+        stumbles over stays in the ledger and is listed in ``unfollowed``.
         """
 
     def public_key(self, db: sqlite3.Connection, dev: str, key_id: str) -> bytes | None:

@@ -66,6 +66,10 @@ TABLES = (
     """CREATE TABLE IF NOT EXISTS entry_scope (
         scope TEXT NOT NULL, log TEXT NOT NULL, seq INTEGER NOT NULL, hash BLOB NOT NULL,
         PRIMARY KEY (scope, log, seq, hash)) STRICT, WITHOUT ROWID""",
+    # Entries kept here that page tables could not take; a person's list, emptied by a rebuild.
+    """CREATE TABLE IF NOT EXISTS unfollowed (
+        hash BLOB PRIMARY KEY, log TEXT NOT NULL, seq INTEGER NOT NULL, says TEXT NOT NULL
+        ) STRICT""",
     "CREATE INDEX IF NOT EXISTS entry_scope_hash ON entry_scope (hash)",
 )
 GUARDED = ("entry", "branch")

@@ -120,8 +120,8 @@ class _Check:
             self._check_openers()
             self._check_single(db, seen, "borrowed")
             self._check_single(db, seen, "branch")
+            self._check_acknowledgements(db, central)
             self._check_private(db, seen)
-        self._check_acknowledgements(db, central)
 
     def _check_file(self, db: sqlite3.Connection) -> None:
         answer = db.execute("PRAGMA integrity_check(1)").fetchone()[0]
@@ -208,12 +208,13 @@ class _Check:
         return fields
 
     def _learn(self, data: object) -> None:
-        try:
-            assert isinstance(data, dict)
-            public = unb64(data["public_key"])
-            self.enrolled.setdefault(data["dev"], set()).add(key_id(public))
-        except (AssertionError, KeyError, TypeError, ValueError):
+        if not isinstance(data, dict) or not isinstance(data.get("dev"), str):
             return  # an odd enrolment vouches for nobody
+        try:
+            public = unb64(data.get("public_key", ""))
+        except ValueError:
+            return
+        self.enrolled.setdefault(data["dev"], set()).add(key_id(public))
         self.keys[key_id(public)] = public
 
     def _check_private(self, db: sqlite3.Connection, seen: sqlite3.Connection) -> None:
