@@ -92,7 +92,8 @@ def one_round(round_id: str) -> str:
         awaited=[_told(one, zone) for one in rounds.awaited(pages(), round_id, now)],
         undecided=len(rounds.bottles(pages(), round_id, "undecided")),
         notes=_out_of_force(row), titles=_protocol_titles(visits),
-        sort=request.args.get("sort", ""), sought=request.args.get("filter", ""), said=said, zone=zone, now=now,
+        sort=request.args.get("sort", ""),
+        sought=request.args.get("filter", ""), said=said, zone=zone, now=now,
     )  # fmt: skip
 
 

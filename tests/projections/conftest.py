@@ -1,0 +1,17 @@
+"""The node on which commands of Bench and Desk are tried."""
+
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+from tests.counter import Node
+
+
+@pytest.fixture
+def node(tmp_path: Path) -> Iterator[Node]:
+    """A round of three planned visits, bottles issued, nothing filled."""
+    made = Node(tmp_path / "node")
+    made.plan(["Q-0401", "Q-0402", "Q-0403"])
+    yield made
+    made.store.close()
