@@ -230,16 +230,7 @@ def test_the_round_s_own_convention_is_used(node):
     assert figure(node).answer.rank == Decimal("6.3")
     with node.pages() as pages:
         given = pages.story("round:spring")[0].fact
-    node.record(
-        RoundChanged(
-            **{
-                name: getattr(given, name)
-                for name in given.__dataclass_fields__
-                if name != "convention"
-            },
-            convention="ceiling",
-        )
-    )
+    node.record(RoundChanged(**{**vars(given), "convention": "ceiling"}))
     found = figure(node).answer
     assert (found.value, found.exceeds) == (Decimal("20"), True)
 
