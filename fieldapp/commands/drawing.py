@@ -5,21 +5,30 @@ one that belongs elsewhere is barred with what it belongs to, until somebody say
 """
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from datetime import datetime
 
-from fieldapp.commands.asked import NOW, Asked, When, check_past, due_of, refuse, standing_of
-from fieldapp.commands.kitchen import NotStarted, StrangeAnswer, StrangeDeviation
+from fieldapp.commands.asked import (
+    NOW,
+    Asked,
+    NotStarted,
+    StrangeAnswer,
+    When,
+    check_past,
+    due_of,
+    standing_of,
+)
+from fieldapp.commands.kitchen import StrangeDeviation
 from fieldapp.domain.codes import normalise
 from fieldapp.domain.deviations import DEVIATIONS
 from fieldapp.domain.errors import RuleBroken, StepOver
 from fieldapp.domain.facts import (
     BottleFilled,
     BottleSet,
+    BottleVoided,
     DeviationStated,
     DrawPoured,
     Fact,
-    RunEnded,
-    RunStarted,
     TapClosed,
     TapOpened,
 )
@@ -42,7 +51,8 @@ SENTENCES = {
 
 FILLS = ("line", "below", "over", "spilled")
 """How full a bottle is, in one press (R21); the first is the ordinary one."""
-UNDONE = ("waiting", "set", "running")
+VOID_WHYS = ("broken", "lost", "dirty", "label", "other")
+"""Why a bottle that was meant for a draw will hold no water (R15)."""
 
 
 class WrongBottle(RuleBroken):
@@ -150,10 +160,8 @@ def blank(
     if not water_lot.strip():
         raise LotMissing()
     lot = water_lot.strip()
-    filled = BottleFilled(
-        visit=visit, bottle=bottle, draw=draw.draw, fill="line", water_lot=lot, **when.fields()
-    )
-    return [*facts, filled]
+    poured = Drawn(draw.draw, bottle, water_lot=lot)
+    return [*facts, _filled(visit, poured, when)]
 
 
 def already_done(
@@ -190,20 +198,34 @@ def already_done(
     return [stated, *(_as_it_happened(pages, visit, told, one, when) for one in drawn)]
 
 
-def start_run(pages: Asked, reading: Reading, visit: str, when: When = NOW) -> list[Fact]:
-    """Open the tap to waste, as a step asks."""
+def swap_bottle(
+    pages: Asked,
+    reading: Reading,
+    visit: str,
+    *,
+    draw: int,
+    code: str,
+    why: str,
+    when: When = NOW,
+) -> list[Fact]:
+    """Put another bottle in the place of the one set or printed for a draw, and void that one."""
     check_past(when, reading)
-    _, due = due_of(pages, visit, reading, "run", over=RunStarted)
-    return [RunStarted(visit=visit, step=due.step, **when.fields())]
-
-
-def end_run(pages: Asked, reading: Reading, visit: str, when: When = NOW) -> list[Fact]:
-    """Close the tap after a run to waste."""
-    check_past(when, reading)
+    if why not in VOID_WHYS:
+        raise StrangeAnswer(question="why", answer=why)
     told = standing_of(pages, visit, reading)
-    if told.due.kind != "run" or told.due.since is None:
-        refuse(pages, visit, told, RunEnded)
-    return [RunEnded(visit=visit, step=told.due.step, **when.fields())]
+    if told.state == "planned":
+        raise NotStarted(visit=visit)
+    meant = _draw(told, draw)
+    if meant.state not in ("waiting", "set"):
+        raise AlreadyFilled(
+            code=meant.bottle, site=visit, draw=draw, filled_at=_text(meant.filled_at)
+        )
+    known = normalise(code)
+    if meant.bottle == known:
+        raise StepOver(at=format_utc(reading.at), visit=visit)
+    old = {meant.bottle} if meant.bottle else _printed_for(pages, visit, draw)
+    gone = [BottleVoided(bottle=one, why=why) for one in sorted(old - {known})]
+    return [*gone, _set(pages, visit, known, meant, when)]
 
 
 def _set(pages: Asked, visit: str, code: str, draw: DrawStanding, when: When) -> BottleSet:
@@ -239,12 +261,17 @@ def _filling(visit: str, draw: DrawStanding, given: Drawn, when: When) -> Fact:
         raise StrangeAnswer(question="fill", answer=given.fill)
     if not draw.keep:
         return DrawPoured(visit=visit, draw=draw.draw, fill=given.fill, **when.fields())
+    return _filled(visit, replace(given, code=draw.bottle, water_lot=""), when)
+
+
+def _filled(visit: str, given: Drawn, when: When) -> BottleFilled:
     return BottleFilled(
         visit=visit,
-        bottle=draw.bottle,
-        draw=draw.draw,
+        bottle=given.code,
+        draw=given.draw,
         fill=given.fill,
         volume_ml=given.volume_ml,
+        water_lot=given.water_lot.strip(),
         **when.fields(),
     )
 
@@ -259,15 +286,20 @@ def _as_it_happened(pages: Asked, visit: str, told: Standing, given: Drawn, when
     row = pages.bottle(code)
     if row is not None and row["filled"] and row["visit"] == visit and row["draw"] == draw.draw:
         raise StepOver(at=str(row["filled_at"]), visit=visit)
-    return BottleFilled(
-        visit=visit,
-        bottle=code,
-        draw=draw.draw,
-        fill=given.fill,
-        volume_ml=given.volume_ml,
-        water_lot=given.water_lot.strip(),
-        **when.fields(),
-    )
+    return _filled(visit, replace(given, code=code), when)
+
+
+def _printed_for(pages: Asked, visit: str, draw: int) -> set[str]:
+    rows = pages.bottles(visit=visit)
+    return {
+        str(row["bottle"])
+        for row in rows
+        if row["printed_for"] == visit and row["draw"] == draw and not row["voided"]
+    }
+
+
+def _text(at: datetime | None) -> str:
+    return format_utc(at) if at else ""
 
 
 def _draw(told: Standing, number: int) -> DrawStanding:

@@ -5,17 +5,15 @@ never refused (R1); what has not may be barred. Bottles and taps are in ``drawin
 """
 
 from collections.abc import Sequence
-from datetime import datetime, timedelta
+from datetime import timedelta
 
 from fieldapp.commands.asked import (
     NOW,
     Asked,
-    NotYet,
     When,
     check_past,
     due_of,
     latest,
-    not_past,
     planned,
     refuse,
     standing_of,
@@ -34,21 +32,12 @@ from fieldapp.domain.facts import (
     VisitOpened,
     VisitResumed,
     VisitSigned,
-    WaterUsed,
 )
 from fieldapp.domain.protocols.steps import CONSENT
 from fieldapp.domain.recorded import Reading
 from fieldapp.domain.timetext import format_utc
 
 SENTENCES = {
-    "no-protocol": (
-        "The protocol {protocol} of this visit has not reached this device. Send and fetch, then"
-        " open the visit again."
-    ),
-    "not-yet": "{stated} lies ahead of this device's clock. Give a time that has passed.",
-    "crossed-times": "The first time is later than the second. Exchange them.",
-    "nothing-said": "Choose when water last ran, or say that nobody knows.",
-    "strange-answer": "{answer} is no answer to this question. Choose one of those shown.",
     "strange-deviation": "{deviation} is nothing this device knows. Choose one of those shown.",
     "name-missing": "Type the name of whoever signs.",
     "not-yours": "{by} recorded that press. Only the person who made it takes it back.",
@@ -56,7 +45,6 @@ SENTENCES = {
         "Something else was recorded since. This press stays; what is wrong in it is corrected, not"
         " taken back."
     ),
-    "not-started": "This visit has not begun. Open it first.",
     "bottles-waiting": (
         "Water stands or runs in this visit: draws {draws} are set and not filled. Say what became"
         " of them, then close."
@@ -81,32 +69,8 @@ LEAVE_WHYS = (
 OUTCOMES = ("done", "unfit", "refused", "nobody-home", "vacant", "water-off", "not-possible")
 """How a visit ends. All but the first close it without the bottles that were planned."""
 
-EXACT = ("at", "about", "between", "unknown")
-KNOWN_BY = ("stated", "seen", "metered")
-WHERE = ("this-tap", "kitchen", "bath", "toilet", "laundry", "outside", "unsaid")
-ABOUT = timedelta(minutes=15)
-"""What "about" gives and takes on either side. Our choice: half the distance of two chips."""
-
 TAKE_BACK_WITHIN = timedelta(seconds=10)
 """The least time for which a press can be taken back, though another follows it (R45)."""
-
-
-class CrossedTimes(RuleBroken):
-    """The last use is put between two times of which the first is the later."""
-
-    kind = "crossed-times"
-
-
-class NothingSaid(RuleBroken):
-    """A statement of last use without a time that does not say "unknown"."""
-
-    kind = "nothing-said"
-
-
-class StrangeAnswer(RuleBroken):
-    """``answer`` is none of the answers that the document offers to ``question``."""
-
-    kind = "strange-answer"
 
 
 class StrangeDeviation(RuleBroken):
@@ -133,12 +97,6 @@ class TakenBackLate(RuleBroken):
     kind = "taken-back-late"
 
 
-class NotStarted(RuleBroken):
-    """The visit has not been opened."""
-
-    kind = "not-started"
-
-
 class BottlesWaiting(RuleBroken):
     """Bottles of ``draws`` are set or running; a visit closed as done would leave them open."""
 
@@ -162,7 +120,7 @@ def leave_visit(
     told = standing_of(pages, visit, reading)
     if told.state != "open":
         refuse(pages, visit, told, VisitLeft)
-    _one_of(why, LEAVE_WHYS)
+    one_of(why, LEAVE_WHYS)
     return [VisitLeft(visit=visit, why=why, reason=reason, **when.fields())]
 
 
@@ -180,7 +138,7 @@ def agree(
 ) -> list[Fact]:
     """Record that somebody of the household agrees, or refuses."""
     check_past(when, reading)
-    _one_of(how, ("spoken", "signed", "refused"))
+    one_of(how, ("spoken", "signed", "refused"))
     told = standing_of(pages, visit, reading)
     if told.due.kind != "ask" or told.due.question != CONSENT:
         refuse(pages, visit, told, OccupantAgreed)
@@ -200,74 +158,13 @@ def answer(
     """Record one answer to the question that is due."""
     check_past(when, reading)
     told = standing_of(pages, visit, reading)
-    if told.due.kind not in ("ask", "wait") or told.due.question != question:
+    if told.due.kind != "ask" or told.due.question != question:
         refuse(pages, visit, told, QuestionAnswered, question=question)
     if answer not in told.due.answers:
         raise StrangeAnswer(question=question, answer=answer)
     return [
         QuestionAnswered(visit=visit, question=question, answer=answer, note=note, **when.fields())
     ]
-
-
-def bounds(
-    exact: str, at: datetime | None, to: datetime | None, reading: Reading
-) -> tuple[datetime, datetime] | None:
-    """Return between which moments water last ran, None where nobody knows.
-
-    "About" gives and takes a quarter of an hour, but never later than now.
-
-    Raises:
-        NothingSaid: A time is missing.
-        CrossedTimes: The second is earlier than the first.
-        NotYet: It lies ahead.
-    """
-    _one_of(exact, EXACT)
-    if exact == "unknown":
-        return None
-    if at is None or (exact == "between" and to is None):
-        raise NothingSaid()
-    first = at - ABOUT if exact == "about" else at
-    last = {"at": at, "about": at + ABOUT}.get(exact, to or at)
-    if not_past(to or at, reading):
-        raise NotYet(stated=format_utc(to or at))
-    if last < first:
-        raise CrossedTimes()
-    return first, max(first, min(last, reading.at))
-
-
-def state_last_use(
-    pages: Asked,
-    reading: Reading,
-    visit: str,
-    *,
-    exact: str,
-    at: datetime | None = None,
-    to: datetime | None = None,
-    where: str = "unsaid",
-    told_by: str = "resident",
-    known_by: str = "stated",
-    again: bool = False,
-) -> list[Fact]:
-    """Record when water last ran as a statement (R4); ``again``: it ran once more, at any step."""
-    _one_of(where, WHERE)
-    _one_of(known_by, KNOWN_BY)
-    told = standing_of(pages, visit, reading)
-    if again and told.state == "planned":
-        raise NotStarted(visit=visit)
-    if not again and told.due.kind != "last-use":
-        refuse(pages, visit, told, WaterUsed)
-    limits = bounds(exact, at, to, reading)
-    first, last = (format_utc(one) for one in limits) if limits else ("", "")
-    used = WaterUsed(
-        visit=visit,
-        from_=first,
-        to=last,
-        exact=exact,
-        where=where,
-        known_by=known_by,
-        told_by=told_by if known_by == "stated" else "",
-    )
-    return [used]
 
 
 def state_deviation(
@@ -356,8 +253,3 @@ def latest_left(pages: Asked, visit: str) -> VisitLeft | None:
 
 def _closed(visit: str, outcome: str, when: When) -> VisitClosed:
     return VisitClosed(visit=visit, outcome=outcome, **when.fields())
-
-
-def _one_of(value: str, known: Sequence[str]) -> None:
-    if value not in known:
-        raise StrangeAnswer(question="", answer=value)

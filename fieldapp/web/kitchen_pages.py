@@ -1,0 +1,224 @@
+"""What the Kitchen's pages show: a day's stops, and one visit with its present step."""
+
+from collections.abc import Mapping, Sequence
+from datetime import UTC, datetime, timedelta
+from functools import partial
+from typing import Any
+from zoneinfo import ZoneInfo
+
+from flask import g, render_template, request, url_for
+
+from fieldapp.commands import drawing, kitchen, last_use
+from fieldapp.commands.asked import latest, planned, standing_of
+from fieldapp.domain.bottles import in_order
+from fieldapp.domain.deviations import stated_kinds
+from fieldapp.domain.facts import TapOpened, VisitClosed, VisitLeft, WaterUsed
+from fieldapp.domain.protocols.standing import Standing
+from fieldapp.domain.recorded import Recorded
+from fieldapp.domain.timetext import chips
+from fieldapp.projections.pages import Row
+from fieldapp.web import said, spoken
+from fieldapp.web.context import pages, person, reading
+from fieldapp.web.rail import rail
+
+MINUTE = timedelta(minutes=1)
+BEFORE_RING = timedelta(minutes=5)
+"""How long before the earliest draw to stand at the door. Our choice."""
+
+RESTS = ("over", "open")
+"""Steps on which no bottle is at hand, so none is drawn large."""
+
+
+def zone_of(visit: str) -> str:
+    """Return the zone of the visit's round, and let every sentence of this request use it."""
+    plan = planned(pages(), visit)
+    found = pages().round(plan.round)
+    g.zone = str(found["zone"]) if found else "UTC"
+    return str(g.zone)
+
+
+def show_visit(visit: str, *, says: str = "", sent: Mapping[str, str] | None = None) -> str:
+    """Return the page of the step that is due; with ``says`` above it where a rule was broken."""
+    found = gather(visit)
+    due = found["due"]
+    waits = due.kind == "wait" and request.args.get("wait")
+    template = "waiting" if waits or _only_waits(found["told"]) else due.kind
+    if due.kind == "last-use":
+        found |= last_use_choices(found["zone"])
+    return render_template(
+        f"kitchen/{template}.html", says=says, sent=sent or {}, **found, spoken=spoken
+    )
+
+
+def gather(visit: str) -> dict[str, Any]:
+    """Return what every page of one visit needs."""
+    zone = zone_of(visit)
+    plan = planned(pages(), visit)
+    told = standing_of(pages(), visit, reading())
+    recorded = in_order(pages().recorded(visit))
+    protocol = pages().protocol(plan.sha256)
+    due = told.due
+    hands = () if due.kind in RESTS else due.draws or (due.next_draw,)
+    return {
+        "visit": visit,
+        "plan": plan,
+        "zone": zone,
+        "told": told,
+        "due": due,
+        "draws": {one.draw: one for one in told.draws},
+        "protocol": protocol,
+        "in_force": protocol is None or protocol.in_force_on(_day(zone)),
+        "site": pages().site(plan.site, plan.round, private=told.state != "closed") or {},
+        "rail": rail(told.draws, (due.next_draw,) if due.next_draw else hands),
+        "undo": undo(recorded, zone),
+        "stand_says": _stand_says(told, recorded),
+        "use_says": _use_says(recorded, zone),
+        "left_entry": latest(recorded, VisitLeft),
+        "expected": _expected(visit, told),
+        "until_says": _up(due.until) if due.until else "",
+        "left_says": _up(told.earliest_draw) if told.earliest_draw else "",
+        **_taken(told, recorded),
+        "back": url_for("kitchen.route", route=plan.route),
+    }
+
+
+def _taken(told: Standing, recorded: Sequence[Recorded]) -> dict[str, Any]:
+    """Return what the tables of bottles, and the steps that fill them, say."""
+    opened, closed = latest(recorded, TapOpened), latest(recorded, VisitClosed)
+    return {
+        "opened_at": opened.done_at if opened else None,
+        "closed_at": closed.done_at if closed else None,
+        "outcome": getattr(closed.fact, "outcome", "") if closed else "",
+        "last_signature": told.number >= told.of - 1,
+        "fills": drawing.FILLS,
+        "fill_word": partial(said.of, said.FILLS),
+        "draw_kind": partial(said.of, said.KINDS),
+        "deviation_says": spoken.deviation,
+    }
+
+
+def undo(recorded: Sequence[Recorded], zone: str) -> dict[str, str]:
+    """Return the last press of this person on the visit, for the bar that takes it back."""
+    acts = [one for one in recorded if one.fact.place == "kitchen"]
+    if not acts or acts[-1].by != person() or not person():
+        return {}
+    first = next(one for one in acts if one.act == acts[-1].act)
+    named = acts[-1] if first.fact.kind == "deviation.stated" else first
+    return {"of": acts[-1].hash, "says": spoken.press(named, zone)}
+
+
+def last_use_choices(zone: str) -> dict[str, Any]:
+    """Return the chips with which a last use of water is stated (R4)."""
+    return {
+        "chip_groups": spoken.chip_groups(chips(reading().at, zone)),
+        "exact": last_use.EXACT,
+        "places": last_use.WHERE,
+        "known_by": last_use.KNOWN_BY,
+        "about_minutes": int(last_use.ABOUT / MINUTE),
+    }
+
+
+def stops_of(route: str) -> list[dict[str, Any]]:
+    """Return the stops of a route in their order, each with where it stands now."""
+    return [_stop(row) for row in pages().visits(route=route)]
+
+
+def next_of(stops: Sequence[Mapping[str, Any]]) -> Mapping[str, Any] | None:
+    """Return the stop to go to: one begun, one that rings, one to do, then one that waits."""
+    for state in ("open", "ready", "planned", "left"):
+        found = [one for one in stops if one["state"] == state]
+        if found:
+            return (
+                min(found, key=lambda one: one["earliest"] or "") if state == "left" else found[0]
+            )
+    return None
+
+
+def ring_of(stops: Sequence[Mapping[str, Any]]) -> Mapping[str, Any] | None:
+    """Return the waiting stop whose earliest draw comes first."""
+    waiting = [one for one in stops if one["state"] == "left" and one["earliest"]]
+    return min(waiting, key=lambda one: one["earliest"], default=None)
+
+
+def different_choices(found: Mapping[str, Any]) -> dict[str, Any]:
+    """Return what the page "something is different" offers."""
+    told: Standing = found["told"]
+    return {
+        "whys": kitchen.LEAVE_WHYS,
+        "kinds": stated_kinds(),
+        "outcomes": kitchen.OUTCOMES[1:],
+        "void_whys": drawing.VOID_WHYS,
+        "empty": [one for one in told.draws if one.state in ("waiting", "set")],
+        "unfilled": [one for one in told.draws if one.filled_at is None],
+    }
+
+
+def _stop(row: Row) -> dict[str, Any]:
+    now = reading().at
+    earliest = row["earliest_draw"]
+    state = row["state"]
+    if state == "left" and (not earliest or datetime.fromisoformat(earliest) <= now):
+        state = "ready" if earliest else "left"
+    protocol = pages().protocol(row["sha256"])
+    plan = pages().plan(row["visit"])
+    left = latest(pages().recorded(row["visit"]), VisitLeft) if row["state"] == "left" else None
+    return {
+        **row,
+        "state": state,
+        "earliest": earliest if row["state"] in ("left", "open") else "",
+        "title": protocol.title if protocol else row["protocol"],
+        "bottles": len(plan.draws) if plan else 0,
+        "left_why": getattr(left.fact, "why", "") if left else "",
+        "left_says": _up(datetime.fromisoformat(earliest)) if earliest else "",
+    }
+
+
+def _only_waits(told: Standing) -> bool:
+    """Say whether a wait is due that no rule bars an act for: the sampler chose it, or a step."""
+    return told.due.kind == "wait" and all(one.breach == "ask" for one in told.bars) and (
+        not told.bars or told.bars[0].rule == "stand-in-doubt"
+    )  # fmt: skip
+
+
+def _stand_says(told: Standing, recorded: Sequence[Recorded]) -> str:
+    used = latest(recorded, WaterUsed)
+    return spoken.stand(told, getattr(used.fact, "told_by", "") if used else "")
+
+
+def _use_says(recorded: Sequence[Recorded], zone: str) -> str:
+    used = latest(recorded, WaterUsed)
+    return spoken.last_use(used, zone, reading().at) if used else ""
+
+
+def _expected(visit: str, told: Standing) -> list[str]:
+    """Return the codes printed for the draw whose bottle is due."""
+    return [
+        str(row["bottle"])
+        for row in pages().bottles(visit=visit)
+        if row["printed_for"] == visit
+        and row["draw"] == told.due.next_draw
+        and not row["voided"]
+        and not row["filled"]
+    ]
+
+
+def _up(until: datetime) -> str:
+    """Return the time left, a begun minute as a whole one."""
+    left = spoken.short_of(until, reading().at)
+    minutes = -(-left // MINUTE)
+    hours, rest = divmod(minutes, 60)
+    return f"{hours} h {rest:02d}" if hours else f"{rest} min"
+
+
+def _day(zone: str) -> Any:
+    return reading().at.astimezone(ZoneInfo(zone)).date()
+
+
+def today(zone: str) -> str:
+    """Return the local day in the zone as ISO text."""
+    return str(_day(zone))
+
+
+def ring_before(earliest: str) -> datetime:
+    """Return when to stand at the door for a draw that may begin at ``earliest``."""
+    return datetime.fromisoformat(earliest).astimezone(UTC) - BEFORE_RING
