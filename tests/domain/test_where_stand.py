@@ -435,3 +435,13 @@ def test_the_earliest_draw_of_a_night_with_a_clock_change_is_six_true_hours_on()
     kitchen.used(to_utc("2026-03-07T22:00", "America/Boise"))
 
     assert kitchen.where().earliest_draw == to_utc("2026-03-08T05:00", "America/Boise")
+
+
+def test_a_press_after_the_draw_does_not_say_when_water_ran_before_it():
+    kitchen = Kitchen(last_use=3 * HOUR).until("last-use")
+    kitchen.record(facts.BottleFilled, bottle="B", draw=1, fill="line", who_drew="resident")
+    kitchen.record(facts.StandStarted)
+
+    assert kitchen.due.kind == "last-use"
+    kitchen.obey()
+    assert kitchen.kinds() == ["stand-short"]

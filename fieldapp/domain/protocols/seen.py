@@ -96,7 +96,8 @@ class Seen:
         self.issued: dict[str, BottleIssued] = {}
         self.stated: list[Noted] = []
         self.signed: set[str] = set()
-        self.begun = self.left = self.last_use_told = False
+        self.begun = self.left = self.use_stated = False
+        self.shut: Noted | None = None
         self.closed: Noted | None = None
         ordered = in_order({one.hash: one for one in recorded}.values())
         for position, entry in enumerate(ordered):
@@ -157,7 +158,7 @@ class Seen:
 
     def _use(self, one: Noted) -> None:
         given = one.fact
-        self.last_use_told = True
+        self.use_stated = True
         earliest, latest = moment(given.from_), moment(given.to)
         unknown = given.exact == "unknown"
         basis = "metered" if given.known_by == "metered" else "stated"
@@ -177,7 +178,7 @@ class Seen:
         self.uses.append(use)
 
     def _shut(self, one: Noted) -> None:
-        self.last_use_told = True
+        self.shut = self.shut or one
         self._pressed_use(one)
 
     def _run(self, one: Noted) -> None:

@@ -55,6 +55,13 @@ class Visit:
         ask = self.asks.get(given.question)
         return ask.stops_if.get(given.answer, "") if ask else ""
 
+    def last_use_told(self) -> bool:
+        """Say whether somebody stated the last use, or pressed before any draw that it is now."""
+        if self.seen.use_stated or self.seen.shut is None:
+            return self.seen.use_stated
+        began = self.seen.began(tuple(n for one in self.fillings for n in one.draws))
+        return began is None or self.seen.shut.position < began.position
+
     def stood(self, filling: Filling) -> Stood | None:
         """Return the stand before those draws as it is known now, what was told late included."""
         told = self.stands_told(filling)

@@ -126,7 +126,7 @@ def _turn_at(visit: Visit, station: Station) -> Turn | None:
 def _question(visit: Visit, station: Question) -> Turn | None:
     ask = station.step
     if ask.question == LAST_USE:
-        if visit.seen.last_use_told:
+        if visit.last_use_told():
             return None
         return Due(kind=LAST_USE, step=ask.id, question=LAST_USE, says=ask.says, why=ask.why,
                    source=ask.source), ()  # fmt: skip
