@@ -44,12 +44,16 @@ class Page:
     marks: dict[str, str]
     text: str
 
-    def main(self) -> Form:
-        """Return the form of the way on."""
+    def main(self) -> Form | None:
+        """Return the form of the way on; nothing where the way on is to wait or to go."""
         found = [form for form in self.forms if "data-main" in form.attributes]
-        if len(found) != 1:
+        if len(found) > 1:
             raise Trouble(f"{self.url} has {len(found)} forms for the way on: {self.text[:300]}")
-        return found[0]
+        return found[0] if found else None
+
+    def main_link(self) -> dict[str, str] | None:
+        """Return the link of the way on, which may carry the end of a wait (``data-until``)."""
+        return next((link for link in self.links if "data-main" in link), None)
 
     def form(self, ending: str) -> Form:
         """Return the form that posts to an address with that ending."""
@@ -119,12 +123,17 @@ class _Reader(HTMLParser):
             self.forms.append(self._form)
         elif tag == "a":
             self.links.append(given)
-        elif self._form is not None:
-            self._take(tag, given)
+        elif (form := self._form_of(given)) is not None:
+            self._take(form, tag, given)
 
-    def _take(self, tag: str, given: dict[str, str]) -> None:
-        form, name = self._form, given.get("name", "")
-        assert form is not None
+    def _form_of(self, given: dict[str, str]) -> Form | None:
+        """Return the form a control belongs to: the one it names, else the one around it."""
+        if named := given.get("form"):
+            return next((f for f in self.forms if f.attributes.get("id") == named), None)
+        return self._form
+
+    def _take(self, form: Form, tag: str, given: dict[str, str]) -> None:
+        name = given.get("name", "")
         if tag == "select":
             self._select = name
         elif tag == "option" and self._select:

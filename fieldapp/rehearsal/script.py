@@ -31,7 +31,7 @@ import re
 from collections.abc import Mapping
 from decimal import Decimal
 
-from fieldapp.commands.kitchen import EXACT, WHERE
+from fieldapp.commands.last_use import EXACT, WHERE
 from fieldapp.domain.protocols import read_protocol
 from fieldapp.domain.protocols.parts import RESERVED
 from fieldapp.domain.protocols.stations import DIFFERENT

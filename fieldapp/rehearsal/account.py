@@ -1,0 +1,107 @@
+"""What a rehearsal found at central and on the tablets, as JSON and in words."""
+
+from collections.abc import Iterable
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+from fieldapp.projections import answers, rounds
+from fieldapp.projections.pages import Pages
+from fieldapp.store import REALM, Store
+from fieldapp.web import said
+from sync.verify import verify_folder
+
+COUNTED = ("issued", "filled", "received", "refused", "to_analyse", "resulted")
+
+
+@dataclass(frozen=True)
+class Account:
+    """Counts are bottles at central; ``good`` is what the exit code says."""
+
+    visits: int
+    bottles: dict[str, int]
+    entries: int
+    photos: int
+    findings: list[dict[str, str]]
+    ninetieth: dict[str, dict[str, Any]]
+    chain: str
+    lines: list[str] = field(default_factory=list)
+
+    @property
+    def good(self) -> bool:
+        """Every issued bottle filled and received, every result in, chains hold, no finding."""
+        told = self.bottles
+        return (
+            told["issued"] == told["filled"] == told["received"]
+            and told["to_analyse"] == told["resulted"]
+            and self.chain == "intact"
+            and not self.findings
+        )
+
+    def as_json(self) -> dict[str, Any]:
+        """Return what ``--json`` prints."""
+        return {
+            "visits": self.visits, "bottles": self.bottles, "entries": self.entries,
+            "photos": self.photos, "findings": self.findings, "ninetieth": self.ninetieth,
+            "chain": self.chain,
+        }  # fmt: skip
+
+    def in_words(self) -> str:
+        """Return what a person reads."""
+        told = self.bottles
+        figures = [
+            f"{analyte}: 90th percentile {one['value'] or 'none'} {one['unit']}, n {one['n']}, "
+            f"{one['convention']}"
+            for analyte, one in self.ninetieth.items()
+        ]
+        return "\n".join([
+            *self.lines,
+            f"{self.visits} visits; bottles: "
+            + ", ".join(f"{told[name]} {name.replace('_', ' ')}" for name in COUNTED),
+            *figures,
+            f"{self.entries} entries at central, chain {self.chain} at every node.",
+            *(f"Finding: {one['says']}" for one in self.findings),
+            "Every bottle went the whole way and nothing is open." if self.good
+            else "Something is open: see above.",
+        ])  # fmt: skip
+
+
+def account_of(central: Path, tablets: Iterable[Path], round_id: str, lines: list[str]) -> Account:
+    """Read the closed folders and return the account of that round."""
+    chain = "intact"
+    for folder in (central, *tablets):
+        report = verify_folder(folder, REALM)
+        if report.first_fault is not None:
+            chain = "broken"
+            lines.append(f"{folder.name}: {report.first_fault.says}")
+    with Store.open(central) as store, store.pages() as pages:
+        now = store.clock.read().at
+        row = pages.round(round_id)
+        assert row is not None
+        totals = rounds.totals(pages, round_id)
+        return Account(
+            visits=pages.count(
+                "SELECT COUNT(*) FROM p_visit WHERE round = ? AND state = 'closed'", (round_id,)
+            ),
+            bottles={name: totals[name] for name in COUNTED},
+            entries=pages.count("SELECT COUNT(*) FROM entry"),
+            photos=0,
+            findings=[
+                {"kind": one["kind"], "about": one["about"], "says": said.finding(one)}
+                for one in pages.findings(now)
+            ],
+            ninetieth=_figures(pages, row, store),
+            chain=chain,
+            lines=lines,
+        )
+
+
+def _figures(pages: Pages, row: Any, store: Store) -> dict[str, dict[str, Any]]:
+    found = {}
+    for figure in answers.figures(pages, row, store.clock.read().at):
+        answer = figure.answer
+        value = None if answer.value is None else format(answer.value, "f")
+        found[answer.analyte] = {
+            "value": value, "unit": "ug/L", "n": answer.n, "convention": answer.convention,
+        }  # fmt: skip
+    return found

@@ -1,0 +1,216 @@
+"""The whole way of a round: plan at central, the day on tablets, receipt, results, answer.
+
+Every press goes through a page of a node in its own process, over HTTP, as a person's would.
+"""
+
+import base64
+import contextlib
+import shutil
+import tempfile
+from collections import deque
+from collections.abc import Callable, Iterator
+from datetime import datetime, timedelta
+from pathlib import Path
+
+from fieldapp import work
+from fieldapp.domain.facts import RoutePlanned
+from fieldapp.nodes import become_central
+from fieldapp.places import shipped
+from fieldapp.reading.rounds import RoundFile, read_round
+from fieldapp.rehearsal.account import Account, account_of
+from fieldapp.rehearsal.browser import Browser
+from fieldapp.rehearsal.day import Script
+from fieldapp.rehearsal.kitchen import Visit
+from fieldapp.rehearsal.nodes import Process, Time, make_node
+from fieldapp.rehearsal.script import read_script
+from fieldapp.running import hand_over
+
+CLEAN_DAY = "clean-day.json"
+TO_THE_LABORATORY = timedelta(hours=2)
+TO_THE_RESULTS = timedelta(days=3)
+
+Codes = dict[tuple[str, int], str]
+
+
+def rehearse(
+    route: Path | None, *, keep: Path | None = None, say: Callable[[str], None] = print
+) -> Account:
+    """Walk a round file (the shipped clean day where none is named).
+
+    Args:
+        route: The round file; its ``rehearsal`` block says what happens.
+        keep: A folder that keeps ``central`` and ``tablet`` afterwards, closed.
+        say: Told what is being done, a line each.
+    """
+    file = route or shipped("demo_routes") / CLEAN_DAY
+    data = file.read_bytes()
+    planned = read_round(data, file.name)
+    script = read_script(data, file.name, planned)
+    with _folder(keep) as folder:
+        return _Walk(planned, script, file.name, data, folder, say).run()
+
+
+@contextlib.contextmanager
+def _folder(keep: Path | None) -> Iterator[Path]:
+    if keep is not None:
+        for name in ("central", "tablet"):
+            shutil.rmtree(keep / name, ignore_errors=True)
+        keep.mkdir(parents=True, exist_ok=True)
+        yield keep
+        return
+    with tempfile.TemporaryDirectory(prefix="rehearsal-") as name:
+        yield Path(name)
+
+
+class _Walk:
+    def __init__(
+        self,
+        planned: RoundFile,
+        script: Script,
+        name: str,
+        data: bytes,
+        folder: Path,
+        say: Callable[[str], None],
+    ) -> None:
+        self.planned, self.script, self.name, self.data = planned, script, name, data
+        self.folder, self.say = folder, say
+        self.time = Time(planned.round.zone)
+        self.days = sorted(planned.routes, key=lambda one: (one.day, one.route))
+        self.codes: Codes = {}
+        self.lines: list[str] = []
+
+    @property
+    def central(self) -> Path:
+        return self.folder / "central"
+
+    def run(self) -> Account:
+        """Do the whole way and return what it came to."""
+        tablets = self._tablets()
+        first = self.days[0] if self.days else None
+        if first is not None:
+            day = datetime.fromisoformat(first.day).date()
+            self.time.begin(self.script.begins_at(day, self.time.zone) - timedelta(minutes=20))
+        self._plan()
+        with Process("central", self.central) as central:
+            for sampler, folder in tablets.items():
+                self._day_of(sampler, folder, central.url)
+            self._receive(central.url)
+            self._results()
+        return account_of(self.central, tablets.values(), self.planned.round.round, self.lines)
+
+    def _tablets(self) -> dict[str, Path]:
+        """Return a folder for each sampler, ``tablet`` for the first."""
+        samplers = list(dict.fromkeys(route.sampler for route in self.days))
+        return {
+            sampler: self.folder / ("tablet" if n == 0 else f"tablet-{n + 1}")
+            for n, sampler in enumerate(samplers)
+        }
+
+    def _plan(self) -> None:
+        """Import the round at central and print its labels."""
+        raw = base64.b64encode(self.data).decode()
+        with make_node(self.central, self.time) as store:
+            become_central(store)
+            work.do(store, "round-import", {"file": self.name, "data": raw}, work.quiet)
+            for route in self.days:
+                if any(visit.route == route.route for visit in self.planned.visits):
+                    work.do(store, "labels", {"route": route.route}, work.quiet)
+            with store.pages() as pages:
+                for row in pages.bottles(round_id=self.planned.round.round):
+                    self.codes[str(row["visit"]), int(row["draw"])] = str(row["bottle"])
+        self._tell(f"Desk: round {self.planned.round.round}, {len(self.codes)} labels printed.")
+
+    def _day_of(self, sampler: str, folder: Path, central: str) -> None:
+        """Enrol a tablet, fetch, walk its routes, send."""
+        make_node(folder, self.time).close()
+        invited = hand_over(self.central, "invite", {"person": sampler}, work.quiet)
+        hand_over(folder, "enrol", {"url": central, "code": invited["code"]}, work.quiet)
+        with Process("serve", folder) as tablet:
+            browser = Browser(tablet.url)
+            fetched = hand_over(folder, "sync", {}, work.quiet)
+            self._tell(f"Kitchen {folder.name}: enrolled, fetched {fetched['pulled']} entries.")
+            _choose(browser, sampler)
+            for route in self.days:
+                if route.sampler == sampler:
+                    self._walk_route(browser, route)
+            sent = hand_over(folder, "sync", {}, work.quiet)
+            self._tell(
+                f"Kitchen {folder.name}: {browser.presses} presses, sent {sent['pushed']} entries, "
+                f"waiting {sent['waiting']}."
+            )
+
+    def _walk_route(self, browser: Browser, route: RoutePlanned) -> None:
+        """Walk the visits in the script's order; a left one is come back to when it is ready."""
+        day = datetime.fromisoformat(route.day).date()
+        self.time.until(self.script.begins_at(day, self.time.zone))
+        mine = [v for v in self.planned.visits if v.route == route.route]
+        mine.sort(key=lambda v: (self.script.visit(v.visit).arrives or "99", v.position))
+        ahead = deque(mine)
+        left: list[tuple[datetime, Visit]] = []
+        while ahead or left:
+            arrival = self._arrival(ahead[0].visit, day) if ahead else None
+            due = min(left, key=lambda one: one[0]) if left else None
+            if due is not None and (arrival is None or due[0] <= arrival):
+                left.remove(due)
+                self.time.until(due[0])
+                visit = due[1]
+            else:
+                planned = ahead.popleft()
+                if arrival is not None:
+                    self.time.until(arrival)
+                visit = self._visit(browser, planned.visit, route.sampler)
+            back = visit.walk()
+            if back is not None:
+                left.append((back, visit))
+
+    def _arrival(self, visit: str, day: object) -> datetime:
+        at = self.script.arrives_at(visit, day, self.time.zone)  # type: ignore[arg-type]
+        return at or self.time.now()
+
+    def _visit(self, browser: Browser, visit: str, sampler: str) -> Visit:
+        codes = {draw: code for (of, draw), code in self.codes.items() if of == visit}
+        signer = next((p.name for p in self.planned.people if p.person == sampler), sampler)
+        return Visit(browser, self.time, visit, self.script.visit(visit), codes, signer)
+
+    def _receive(self, central: str) -> None:
+        """Receive every filled bottle at the Bench, with the laboratory's numbers."""
+        self.time.until(self.time.now() + TO_THE_LABORATORY)
+        browser = Browser(central)
+        _choose(browser, self._person("clerk"))
+        page = browser.open("/bench/")
+        for place, code in enumerate(self.codes.values()):
+            form = page.main()
+            assert form is not None
+            number = self.script.number(place)
+            page = browser.press(page, form, {"bottle": code, "laboratory_number": number})
+        self._tell(f"Bench: {len(self.codes)} bottles scanned.")
+
+    def _results(self) -> None:
+        """Import the laboratory's file at central, over its own door for commands."""
+        self.time.until(self.time.now() + TO_THE_RESULTS)
+        received = {
+            place: (code, self.script.number(n))
+            for n, (place, code) in enumerate(self.codes.items())
+        }
+        table = self.script.results_csv(received)
+        if table.count("\n") < 2:
+            return
+        raw = base64.b64encode(table.encode()).decode()
+        answer = hand_over(
+            self.central, "results-import", {"file": "results.csv", "data": raw}, work.quiet
+        )
+        self._tell(f"Desk: {answer['rows']} results in.")
+
+    def _person(self, role: str) -> str:
+        """Return somebody of that role; the file's first person where nobody has it."""
+        people = self.planned.people
+        return next((p.person for p in people if role in p.roles), people[0].person)
+
+    def _tell(self, line: str) -> None:
+        self.lines.append(line)
+        self.say(line)
+
+
+def _choose(browser: Browser, person: str) -> None:
+    page = browser.open("/")
+    browser.press(page, page.form("/person"), {"person": person})
