@@ -95,6 +95,13 @@ def bottles(pages: Pages, round_id: str, which: str) -> list[Row]:
     )
 
 
+def count(pages: Pages, round_id: str, which: str) -> int:
+    """Return how long one of the ``LISTS`` is."""
+    return pages.count(
+        f"SELECT COUNT(*) FROM p_bottle WHERE round = ? AND {LISTS[which]}", (round_id,)
+    )
+
+
 def strangers(pages: Pages) -> list[Row]:
     """Return the bottles that no round of this node issued and yet somebody filled or received."""
     return pages.rows(
@@ -189,6 +196,17 @@ def latest_receipt_by(pages: Pages, person: str) -> Recorded | None:
         (person,),
     ).fetchone()
     return pages.fact(row[0]) if row else None
+
+
+def latest_number_by(pages: Pages, person: str) -> str:
+    """Return the last laboratory number that this person gave a bottle, empty for none yet."""
+    row = pages.db.execute(
+        "SELECT json_extract(f.data, '$.laboratory_number') FROM p_fact f"
+        f" WHERE f.kind = 'bottle.received' AND f.by = ? AND {facts.LIVING}"
+        " AND json_extract(f.data, '$.laboratory_number') != '' ORDER BY f.rowid DESC LIMIT 1",
+        (person,),
+    ).fetchone()
+    return str(row[0]) if row else ""
 
 
 def counted(receipts: Iterable[Recorded]) -> Mapping[str, int]:

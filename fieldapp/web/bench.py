@@ -4,10 +4,11 @@ from datetime import datetime
 from typing import Any
 from zoneinfo import ZoneInfo
 
-from flask import Blueprint, Response, g, jsonify, render_template, request, session, url_for
+from flask import Blueprint, Response, flash, g, jsonify, render_template, request, session, url_for
 from marshmallow import Schema, fields, validate
 from werkzeug.wrappers import Response as AnyResponse
 
+from fieldapp import words
 from fieldapp.commands import bench
 from fieldapp.domain.codes import BadCode, normalise
 from fieldapp.domain.decision import Decision
@@ -94,7 +95,9 @@ def take_back() -> AnyResponse:
             bench.take_back(asked, at, form["entry"], latest=latest.hash if latest else "")
         )
 
-    return perform(decide, then=url_for(".index"))
+    gone = perform(decide, then=url_for(".index"))
+    flash(words.gettext("Taken back. The bottle is not received now."))
+    return gone
 
 
 def _ask_for_sticker(scanned: str) -> Response | str | tuple[str, int] | tuple[Response, int]:
@@ -156,12 +159,14 @@ def _counter(
     """Render the counter, or for the queue's script the parts of it that changed."""
     g.zone = zone = state.zone()
     receipts = rounds.latest_receipts(pages(), _midnight(zone))
+    listed = [{"entry": entry, "row": _row_of(entry)} for entry in receipts]
     given = {
         "answer": answer,
         "form": form or {},
         "numbering": session.get("numbering", "counted"),
         "number": _next_number(),
-        "receipts": [{"entry": entry, "row": _row_of(entry)} for entry in receipts],
+        "receipts": listed,
+        "awaited": _awaited({str(one["row"].get("round", "")) for one in listed}),
         "counts": rounds.counted(receipts),
         "latest": receipts[0] if receipts and receipts[0].by == person() else None,
         "checks": said.CHECKS,
@@ -193,11 +198,14 @@ def _row_of(entry: Recorded) -> Any:
     return pages().bottle(entry.fact.bottle) or {}
 
 
+def _awaited(round_ids: set[str]) -> int:
+    """Return how many filled bottles of the rounds that came today are not here yet."""
+    return sum(rounds.count(pages(), one, "not-received") for one in round_ids if one)
+
+
 def _next_number() -> str:
     """Return the number after the last that this person gave; the clerk types the first."""
-    latest = rounds.latest_receipt_by(pages(), person()) if person() else None
-    given = latest.fact.laboratory_number if latest else ""  # type: ignore[attr-defined]
-    return bench.next_number(given)
+    return bench.next_number(rounds.latest_number_by(pages(), person())) if person() else ""
 
 
 def _midnight(zone: str) -> datetime:

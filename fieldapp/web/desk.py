@@ -55,7 +55,7 @@ def index() -> str:
             {
                 "round": row,
                 "findings": len(found),
-                "undecided": len(rounds.bottles(pages(), row["round"], "undecided")),
+                "undecided": rounds.count(pages(), row["round"], "undecided"),
                 "totals": rounds.totals(pages(), row["round"]),
                 "figures": answers.figures(pages(), row, now),
             }
@@ -90,7 +90,7 @@ def one_round(round_id: str) -> str:
         open_findings=[_told(one, zone) for one in found if not one["settled"]],
         settled=[_told(one, zone) for one in found if one["settled"]],
         awaited=[_told(one, zone) for one in rounds.awaited(pages(), round_id, now)],
-        undecided=len(rounds.bottles(pages(), round_id, "undecided")),
+        undecided=rounds.count(pages(), round_id, "undecided"),
         notes=_out_of_force(row), titles=_protocol_titles(visits),
         sort=request.args.get("sort", ""),
         sought=request.args.get("filter", ""), said=said, zone=zone, now=now,

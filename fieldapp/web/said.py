@@ -45,7 +45,7 @@ KINDS = {
     "random-daytime": N_("random daytime"),
     "blank": N_("field blank"),
     "duplicate": N_("duplicate"),
-    "": N_("spare"),
+    "": "",
 }
 
 PURPOSES = {
@@ -114,9 +114,9 @@ ENTRIES = {
     "bottle.voided": N_("Voided: {why}"),
     "bottle.set": N_("Scanned and stood in order at visit {visit}, draw {draw}"),
     "bottle.filled": N_("Filled at visit {visit}, draw {draw}: {fill}"),
-    "bottle.received": N_("Received: {outcome}, laboratory's number {laboratory_number}"),
+    "bottle.received": N_("Received: {outcome}{number}"),
     "analysis.decided": N_("Decided: {decision}"),
-    "result.reported": N_("Result: {analyte} {qualifier}{value} {unit}"),
+    "result.reported": N_("Result: {analyte} {level}"),
     "finding.settled": N_("Finding settled"),
     "visit.closed": N_("Visit closed: {outcome}"),
     "visit.opened": N_("Visit opened"),
@@ -171,12 +171,14 @@ def entry(recorded: Recorded) -> str:
     """Return in a few words what an entry says; the kind itself where it has none."""
     given = recorded.fact
     data = json.loads(json.dumps(given.data()))
-    values = {"qualifier": "", "value": "", "laboratory_number": words.gettext("none"), **data}
+    values = {"number": "", **data}
+    if number := data.get("laboratory_number"):
+        values["number"] = ", " + words.gettext("laboratory's number {n}").format(n=number)
     for name, table in (("fill", FILLS), ("why", VOIDED), ("outcome", OUTCOMES)):
         if values.get(name) in table:
             values[name] = of(table, str(values[name]))
-    if values["qualifier"] == "ND":
-        values["qualifier"] = words.gettext("not detected")
+    if given.kind == "result.reported":
+        values["level"] = level(data)
     if given.kind == "analysis.decided":
         analyse, leave = words.gettext("analyse"), words.gettext("do not analyse")
         values["decision"] = analyse if values.get("analyse") else leave
@@ -206,6 +208,13 @@ def stand(visit: Mapping[str, Any]) -> str:
     said = f"{length}, {of(BASES, visit['stand_basis'])}"
     verdict = of(VERDICTS, visit["stand_verdict"])
     return f"{said}: {verdict}" if verdict else said
+
+
+def draw(bottle: Mapping[str, Any]) -> str:
+    """Return which draw a bottle holds or is meant for; a spare without one says so."""
+    if not bottle["draw"]:
+        return words.gettext("spare") if bottle["spare"] else "–"
+    return f"{bottle['draw']} {of(KINDS, bottle['kind'])}".strip()
 
 
 def level(result: Mapping[str, Any]) -> str:

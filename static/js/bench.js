@@ -27,7 +27,6 @@ class Counter {
   start() {
     this.form.addEventListener("submit", event => this.take(event))
     this.form.addEventListener("change", event => this.chosen(event))
-    addEventListener("pagehide", event => this.keepOpen(event))
     addEventListener("beforeunload", event => this.keepOpen(event))
     this.root.addEventListener("keydown", event => this.catchStrayKeys(event))
     this.focus()
@@ -87,15 +86,36 @@ class Counter {
 
   show(answer, fields) {
     const word = answer.word || "stop"
-    const place = this.root.querySelector("#answer")
-    if (answer.answer) place.innerHTML = answer.answer
-    else place.replaceChildren(this.plainStop(answer.says))
-    place.firstElementChild?.classList.add("told--new")
+    this.tell(answer)
     if (answer.received) this.root.querySelector("#received").innerHTML = answer.received
     if (answer.act) this.form.elements.namedItem("act").value = answer.act
     if (answer.number !== undefined && fields.get("numbering") === "counted") this.next(answer.number)
     beep(TONES_HZ[word] ?? TONES_HZ.stop)
     if (word === "stop") navigator.vibrate?.(300)
+  }
+
+  // A stop stays, small, under what follows it until somebody has seen it: nothing else keeps it.
+  tell(answer) {
+    const place = this.root.querySelector("#answer")
+    const before = [...place.children].filter(panel => panel.matches(".told--stop"))
+    const fresh = document.createElement("template")
+    if (answer.answer) fresh.innerHTML = answer.answer
+    else fresh.content.append(this.plainStop(answer.says))
+    fresh.content.firstElementChild?.classList.add("told--new")
+    place.replaceChildren(fresh.content, ...before)
+    before.forEach(panel => this.keepSmall(panel))
+  }
+
+  keepSmall(panel) {
+    panel.classList.remove("told--new")
+    panel.classList.add("told--before")
+    if (panel.querySelector(".told__seen")) return
+    const seen = document.createElement("button")
+    seen.type = "button"
+    seen.className = "told__seen"
+    seen.textContent = this.root.querySelector("#answer").dataset.seen
+    seen.addEventListener("click", () => { panel.remove(); this.focus() })
+    panel.append(seen)
   }
 
   plainStop(says) {
@@ -129,6 +149,12 @@ class Counter {
     if (target.name === "outcome" && target.value !== "accepted") {
       this.form.querySelector("details").open = true
       this.form.elements.namedItem("checks").focus()
+    } else if (target.name === "numbering") {
+      this.number.value = target.value === "counted" ? this.number.defaultValue : ""
+      this.form.querySelectorAll("[data-numbering]").forEach(says => {
+        says.hidden = says.dataset.numbering !== target.value
+      })
+      this.focus()
     } else if (target.type === "radio") {
       this.focus()
     }
