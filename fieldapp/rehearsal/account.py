@@ -2,6 +2,7 @@
 
 from collections.abc import Iterable
 from dataclasses import dataclass, field
+from decimal import Decimal
 from pathlib import Path
 from typing import Any
 
@@ -55,7 +56,6 @@ class Account:
             for analyte, one in self.ninetieth.items()
         ]
         return "\n".join([
-            *self.lines,
             f"{self.visits} visits; bottles: "
             + ", ".join(f"{told[name]} {name.replace('_', ' ')}" for name in COUNTED),
             *figures,
@@ -96,11 +96,16 @@ def account_of(central: Path, tablets: Iterable[Path], round_id: str, lines: lis
         )
 
 
+def _plain(level: Decimal) -> str:
+    """Return a level without zeros that say nothing: ``556``, never ``5.56E+2``."""
+    return format(level.normalize(), "f")
+
+
 def _figures(pages: Pages, row: Any, store: Store) -> dict[str, dict[str, Any]]:
     found = {}
     for figure in answers.figures(pages, row, store.clock.read().at):
         answer = figure.answer
-        value = None if answer.value is None else format(answer.value, "f")
+        value = None if answer.value is None else _plain(answer.value)
         found[answer.analyte] = {
             "value": value, "unit": "ug/L", "n": answer.n, "convention": answer.convention,
         }  # fmt: skip

@@ -74,6 +74,7 @@ class Process:
             stdout=subprocess.PIPE,
             stderr=subprocess.STDOUT,
             text=True,
+            start_new_session=True,  # a Ctrl-C reaches the demo, which ends its nodes in order
             env={**os.environ, "PYTHONPATH": os.pathsep.join(p for p in sys.path if p)},
         )
         self._ready = threading.Event()

@@ -24,6 +24,7 @@ from fieldapp.rehearsal.kitchen import Visit
 from fieldapp.rehearsal.nodes import Process, Time, make_node
 from fieldapp.rehearsal.script import read_script
 from fieldapp.running import hand_over
+from fieldapp.store import Store
 
 CLEAN_DAY = "clean-day.json"
 TO_THE_LABORATORY = timedelta(hours=2)
@@ -108,23 +109,14 @@ class _Walk:
 
     def _plan(self) -> None:
         """Import the round at central and print its labels."""
-        raw = base64.b64encode(self.data).decode()
         with make_node(self.central, self.time) as store:
-            become_central(store)
-            work.do(store, "round-import", {"file": self.name, "data": raw}, work.quiet)
-            for route in self.days:
-                if any(visit.route == route.route for visit in self.planned.visits):
-                    work.do(store, "labels", {"route": route.route}, work.quiet)
-            with store.pages() as pages:
-                for row in pages.bottles(round_id=self.planned.round.round):
-                    self.codes[str(row["visit"]), int(row["draw"])] = str(row["bottle"])
+            self.codes = plan_at(store, self.name, self.data, self.planned)
         self._tell(f"Desk: round {self.planned.round.round}, {len(self.codes)} labels printed.")
 
     def _day_of(self, sampler: str, folder: Path, central: str) -> None:
         """Enrol a tablet, fetch, walk its routes, send."""
         make_node(folder, self.time).close()
-        invited = hand_over(self.central, "invite", {"person": sampler}, work.quiet)
-        hand_over(folder, "enrol", {"url": central, "code": invited["code"]}, work.quiet)
+        invite_and_enrol(self.central, folder, central, sampler)
         with Process("serve", folder) as tablet:
             browser = Browser(tablet.url)
             fetched = hand_over(folder, "sync", {}, work.quiet)
@@ -209,6 +201,25 @@ class _Walk:
     def _tell(self, line: str) -> None:
         self.lines.append(line)
         self.say(line)
+
+
+def plan_at(store: Store, name: str, data: bytes, planned: RoundFile) -> Codes:
+    """Make the node a central, import the round there, print its labels; return the codes."""
+    become_central(store)
+    raw = base64.b64encode(data).decode()
+    work.do(store, "round-import", {"file": name, "data": raw}, work.quiet)
+    for route in planned.routes:
+        if any(visit.route == route.route for visit in planned.visits):
+            work.do(store, "labels", {"route": route.route}, work.quiet)
+    with store.pages() as pages:
+        rows = pages.bottles(round_id=planned.round.round)
+    return {(str(row["visit"]), int(row["draw"])): str(row["bottle"]) for row in rows}
+
+
+def invite_and_enrol(central: Path, tablet: Path, url: str, person: str) -> None:
+    """Enrol a tablet for a person with a code that the running central gives."""
+    invited = hand_over(central, "invite", {"person": person}, work.quiet)
+    hand_over(tablet, "enrol", {"url": url, "code": invited["code"]}, work.quiet)
 
 
 def _choose(browser: Browser, person: str) -> None:
