@@ -148,16 +148,14 @@ class Counter {
   chosen({ target }) {
     if (target.name === "outcome" && target.value !== "accepted") {
       this.form.querySelector("details").open = true
-      this.form.elements.namedItem("checks").focus()
     } else if (target.name === "numbering") {
       this.number.value = target.value === "counted" ? this.number.defaultValue : ""
       this.form.querySelectorAll("[data-numbering]").forEach(says => {
         says.hidden = says.dataset.numbering !== target.value
       })
-      this.focus()
-    } else if (target.type === "radio") {
-      this.focus()
     }
+    // the next scan may come at any moment; only who types a reason or a number keeps the cursor
+    if (target.type === "radio" || target.name === "checks") this.focus()
   }
 
   count() {
