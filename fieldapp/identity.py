@@ -17,6 +17,7 @@ from sync.keys import DeviceKey, key_id
 
 NODE = "node.json"
 CENTRAL = "central.json"
+DATABASE = "ledger.db"
 
 
 @dataclass(frozen=True)
@@ -35,17 +36,26 @@ def exists(folder: Path) -> bool:
 
 
 def make(folder: Path, *, scripted: bool) -> None:
-    """Make the node's key and identity file; the key first, so a torn start shows as no node."""
-    path = key_path(folder)
-    path.parent.mkdir(mode=0o700, exist_ok=True)
-    if path.exists():  # the start before this one was cut between key and identity
-        path.unlink()
-    DeviceKey.generate().save(path)
+    """Make the node's key and identity file; the key first, so a torn start shows as no node.
+
+    Raises:
+        Unsuitable: The folder is not empty in a way that a torn start would leave it.
+    """
     if not scripted and (folder / SCRIPT).exists():
         raise Unsuitable(
             f"{SCRIPT} lies in this folder, but only a rehearsal makes such a node. "
             f"Remove {SCRIPT} or use another folder."
         )
+    if (folder / DATABASE).exists():
+        raise Unsuitable(
+            f"{NODE} is gone and {DATABASE} is there, so this folder's node cannot be told. "
+            "Keep the folder as it is and enrol this device anew in another folder."
+        )
+    path = key_path(folder)
+    path.parent.mkdir(mode=0o700, exist_ok=True)
+    if path.exists():  # the start before this one was cut between key and identity
+        path.unlink()
+    DeviceKey.generate().save(path)
     # a rehearsal's device shows in its id, so that a real central can refuse it
     dev = ("R-" if scripted else "D-") + "".join(secrets.choice(ALPHABET) for _ in range(6))
     write_private(folder / NODE, {

@@ -1,6 +1,14 @@
 """By which words an entry is pulled: the store sets them when it signs (design 5)."""
 
-from fieldapp.domain.facts import ALL, CENTRAL, ROUTE_LAB, EntryCorrected, EntryWithdrawn, Fact
+from fieldapp.domain.facts import (
+    ALL,
+    CENTRAL,
+    ROUTE_LAB,
+    EntryCorrected,
+    EntryWithdrawn,
+    Fact,
+    SiteDropped,
+)
 from fieldapp.projections.pages import Pages
 
 
@@ -18,11 +26,22 @@ def scope_of(pages: Pages, given: Fact) -> list[str]:
         if answered is None:
             return ["all"]
         return scope_of(pages, answered.fact)
+    if isinstance(given, SiteDropped):
+        return [f"route:{route}" for route in _routes_to(pages, given)]
     route = _route_of(pages, given)
     words = [f"route:{route}"] if route else []
     if given.reach == ROUTE_LAB and (laboratory := _laboratory_of(pages, given, route)):
         words.append(f"lab:{laboratory}")
     return words
+
+
+def _routes_to(pages: Pages, given: SiteDropped) -> list[str]:
+    """Return the routes that visit a site: a site names none itself when it leaves the round."""
+    rows = pages.rows(
+        "SELECT DISTINCT route FROM p_visit WHERE site = ? AND round = ? ORDER BY route",
+        (given.site, given.round),
+    )
+    return [str(row["route"]) for row in rows]
 
 
 def _route_of(pages: Pages, given: Fact) -> str:

@@ -6,6 +6,7 @@ hooks it needs and knows nothing of HTTP.
 """
 
 import contextlib
+import errno
 import hashlib
 import json
 import sqlite3
@@ -21,6 +22,7 @@ from fieldapp.domain.decision import Decision
 from fieldapp.domain.errors import RuleBroken
 from fieldapp.domain.facts import KINDS, Fact, LogOpened
 from fieldapp.domain.recorded import Reading
+from fieldapp.identity import DATABASE
 from fieldapp.projections.pages import Pages
 from fieldapp.projections.summaries import text
 from fieldapp.schemas.facts import check_fact
@@ -38,18 +40,28 @@ from sync.entry import (
     unb64,
     verify,
 )
-from sync.errors import BadEntry, Refused, SyncError, Unsuitable
+from sync.errors import BadEntry, NotKept, Refused, SyncError, Unsuitable
 from sync.folder import FolderLock, check_place, read_anchors, write_anchor
+from sync.follow import ODD_DATA
+from sync.follow import follow as follow_with_care
 from sync.keys import DeviceKey
 from sync.replica import Moment, Pin, Replica
 
 REALM = Realm("tapwitness")
-DATABASE = "ledger.db"
 MOST_BYTES = {"protocol.kept": 24 * 1024, "log.carried": 32 * 1024}
 BALLAST = "ballast"
 BALLAST_BYTES = 8 * 1024 * 1024
 CHECKED_AT_START = 1000
 """Entries of the own log verified at each start (sync.md B4)."""
+
+DAMAGED = (
+    "The database file is damaged. Keep the folder as it is, run 'tapwitness verify', and enrol "
+    "this device anew in another folder."
+)
+DISK_FAILED = (
+    "The disk failed while saving. The last press was not saved. Stop the program, start it "
+    "again, and look at what stands."
+)
 
 _LOCAL_TABLES = """
 CREATE TABLE IF NOT EXISTS here (name TEXT PRIMARY KEY, value TEXT NOT NULL) STRICT;
@@ -92,7 +104,8 @@ class Store:
         self._lock_file = keep_lock
         self._writing = threading.RLock()
         self._readers = threading.local()
-        self._open_readers: list[sqlite3.Connection] = []
+        self._open_readers: list[tuple[threading.Thread, sqlite3.Connection]] = []
+        self._lending = threading.Lock()
         self._stopped = ""
         self._replica: Replica | None = None
         self.sending = threading.Lock()  # one run of exchanges at a time
@@ -103,7 +116,6 @@ class Store:
         self.dev = self.identity.dev
         self.key = DeviceKey.load(identity.key_path(folder))
         self._db = sqlite3.connect(folder / DATABASE, isolation_level=None, check_same_thread=False)
-        ledger.prepare(self._db)
 
     # opening and closing
 
@@ -129,16 +141,20 @@ class Store:
             if fresh:
                 identity.make(folder, scripted=scripted)
             store = cls(folder, clock or identity.clock_of(folder), keep_lock=lock)
-            store._prepare()
         except BaseException:
             lock.release()
+            raise
+        try:
+            store._prepare()
+        except BaseException:
+            store.close()
             raise
         return store
 
     def close(self) -> None:
         """Checkpoint, close every connection and give the folder back; no ``-wal`` stays."""
         with self._writing:
-            for reader in self._open_readers:
+            for _, reader in self._open_readers:
                 with contextlib.suppress(sqlite3.Error):
                     reader.close()
             with contextlib.suppress(sqlite3.Error):
@@ -154,18 +170,21 @@ class Store:
 
     def _prepare(self) -> None:
         """Make what is missing, look at the file and the log's end, and see a restored copy."""
-        if self._db.execute("PRAGMA quick_check").fetchone()[0] != "ok":
-            raise Unsuitable(
-                "The database file is damaged. Keep the folder as it is, run "
-                "'tapwitness verify', and enrol this device anew in another folder."
-            )
+        try:
+            ledger.prepare(self._db)
+            if self._db.execute("PRAGMA quick_check").fetchone()[0] != "ok":
+                raise Unsuitable(DAMAGED)
+        except sqlite3.OperationalError:
+            raise
+        except sqlite3.DatabaseError as fault:
+            raise Unsuitable(DAMAGED) from fault
         with self.transaction() as db:
             for statement in filter(str.strip, _LOCAL_TABLES.split(";")):
                 db.execute(statement)
             ledger.make_tables(db)
             stale = self.get("page_tables") != str(projections.VERSION)
             if stale:
-                projections.rebuild(db, self._all_entries(db))
+                self._rebuild(db)
                 self.put("page_tables", str(projections.VERSION))
             if not self.own_logs(db):
                 self.open_log(db, "first")
@@ -175,12 +194,21 @@ class Store:
         self._keep_ballast()
 
     def _behind_anchor(self, db: sqlite3.Connection) -> bool:
-        """Say whether the database is older than its anchor: it was restored (sync.md B7)."""
-        anchor = read_anchors(self.folder).get(self.current_log(db))
-        if anchor is None:
-            return False
-        held = ledger.hash_at(db, self.current_log(db), anchor.seq)
-        return held != anchor.hash
+        """Say whether the database is older than its anchors: it was restored (sync.md B7).
+
+        The log that went on may be one this copy has never heard of. An anchor that a log was
+        opened for once does not open another at every start.
+        """
+        own, current = self.own_logs(db), self.current_log(db)
+        behind = {
+            f"{log}:{anchor.seq}"
+            for log, anchor in read_anchors(self.folder).items()
+            if (log == current or log not in own)
+            and ledger.hash_at(db, log, anchor.seq) != anchor.hash
+        }
+        known = set(self.get("behind").split())
+        self.put("behind", " ".join(sorted(behind | known)))
+        return bool(behind - known)
 
     def _check_tail(self) -> None:
         with self.reader() as db:
@@ -193,16 +221,34 @@ class Store:
                 first = entries[-1].seq + 1
 
     def _all_entries(self, db: sqlite3.Connection) -> Iterator[Entry]:
-        for table in ("entry", "borrowed"):
-            last = ("", 0)
+        """Return all entries that page tables follow; of a branch those that central named."""
+        for table in ("entry", "borrowed", "branch"):
+            stated = " AND stated > 0" if table == "branch" else ""
+            last = ("", 0, b"")
             while rows := db.execute(
-                f"SELECT log, seq, hash, body, sig FROM {table} WHERE (log, seq) > (?, ?)"
-                " ORDER BY log, seq LIMIT 500",
+                f"SELECT log, seq, hash, body, sig FROM {table} WHERE (log, seq, hash) > (?, ?, ?)"
+                f"{stated} ORDER BY log, seq, hash LIMIT 500",
                 last,
             ).fetchall():
                 for log, seq, digest, body, sig in rows:
                     yield Entry(log, seq, bytes(digest), bytes(body), bytes(sig))
-                last = rows[-1][:2]
+                last = rows[-1][:3]
+
+    def _rebuild(self, db: sqlite3.Connection) -> int:
+        """Make the page tables anew; an entry that hurts them is listed and holds up nothing."""
+        db.execute("DELETE FROM unfollowed")
+        db.execute("SAVEPOINT rebuilding")
+        try:
+            read = projections.rebuild(db, self._all_entries(db))
+            self._unwrap(db)
+        except ODD_DATA:
+            db.execute("ROLLBACK TO rebuilding")
+            read = projections.rebuild(db, iter(()))
+            for entry in self._all_entries(db):
+                follow_with_care(self.replica(), db, [entry])
+                read += 1
+        db.execute("RELEASE rebuilding")
+        return read
 
     def _keep_ballast(self) -> None:
         ballast = self.folder / BALLAST
@@ -228,32 +274,31 @@ class Store:
                 self._db.execute("BEGIN IMMEDIATE")
                 yield self._db
                 self._commit()
-            except BaseException:
+            except BaseException as fault:
                 # SQLITE_FULL has rolled back already; then there is nothing to undo
                 with contextlib.suppress(sqlite3.OperationalError):
                     self._db.execute("ROLLBACK")
+                if _disk_failed(fault):
+                    self._stopped = DISK_FAILED
+                    raise RecordStopped(DISK_FAILED) from fault
                 raise
             finally:
                 self._in_transaction = False
             self._anchor()
 
     def _commit(self) -> None:
-        try:
-            self._db.execute("COMMIT")
-        except sqlite3.OperationalError as fault:
-            if "I/O" in str(fault):
-                self._stopped = (
-                    "The disk failed while saving. The last press was not saved. Stop the "
-                    "program, start it again, and look at what stands."
-                )
-                raise RecordStopped(self._stopped) from fault
-            raise
+        self._db.execute("COMMIT")
 
     def _anchor(self) -> None:
         for log in self._touched:
             head = ledger.head(self._db, log)
             if head is not None:
-                write_anchor(self.folder, log, head)
+                try:
+                    write_anchor(self.folder, log, head)
+                except OSError as fault:
+                    # The press is on disk; an anchor may lag behind and is written with the next
+                    if fault.errno not in (errno.ENOSPC, errno.EDQUOT):
+                        raise
 
     @contextlib.contextmanager
     def reader(self) -> Iterator[sqlite3.Connection]:
@@ -264,7 +309,7 @@ class Store:
             db = sqlite3.connect(uri, uri=True, isolation_level=None, check_same_thread=False)
             ledger.prepare(db, reader=True)
             self._readers.db = db
-            self._open_readers.append(db)
+            self._keep_reader(db)
         if db.in_transaction:
             yield db
             return
@@ -275,6 +320,15 @@ class Store:
             db.execute("ROLLBACK")
 
     reading = reader
+
+    def _keep_reader(self, db: sqlite3.Connection) -> None:
+        """Remember this thread's reader and close those whose threads have ended."""
+        with self._lending:
+            ended = [one for thread, one in self._open_readers if not thread.is_alive()]
+            self._open_readers = [pair for pair in self._open_readers if pair[0].is_alive()]
+            self._open_readers.append((threading.current_thread(), db))
+        for one in ended:
+            one.close()
 
     @contextlib.contextmanager
     def pages(self) -> Iterator[Pages]:
@@ -322,7 +376,9 @@ class Store:
             decision = decided if isinstance(decided, Decision) else Decision(decided)
             entries = self._append_all(db, decision.facts, by, auth, act, moment)
             first = entries[0].seq if entries else 0
-            answer = json.dumps(dict(decision.answer), ensure_ascii=False)
+            answer = json.dumps(
+                {"at": text(moment.at), "answer": dict(decision.answer)}, ensure_ascii=False
+            )
             db.execute(
                 "INSERT INTO act (id, fields_hash, log, first_seq, n, answer)"
                 " VALUES (?, ?, ?, ?, ?, ?)",
@@ -331,12 +387,15 @@ class Store:
             return Answer(decision.answer, tuple(b64(e.hash) for e in entries), again=False)
 
     def _again(self, db: sqlite3.Connection, mark: str, known: Sequence[Any]) -> Answer:
-        fields_hash, log, first, n, answer = known
-        entries = ledger.read(db, log, first, n) if n else []
+        fields_hash, log, first, n, written = known
+        kept = json.loads(written)
         if fields_hash != mark:
-            at = entries[0].fields()["at"] if entries else ""
-            raise ActDiffers(at=at, answer=json.loads(answer))
-        return Answer(json.loads(answer), tuple(b64(e.hash) for e in entries), again=True)
+            raise ActDiffers(at=kept["at"], answer=kept["answer"])
+        rows = db.execute(
+            "SELECT hash FROM entry WHERE log = ? AND seq >= ? AND seq < ? ORDER BY seq",
+            (log, first, first + n),
+        )
+        return Answer(kept["answer"], tuple(b64(bytes(row[0])) for row in rows), again=True)
 
     def _append_all(
         self,
@@ -404,22 +463,34 @@ class Store:
 
         Of a carried entry the one inside counts, if its own author's signature holds.
         """
-        projections.follow(db, [inner for entry in entries for inner in self._inner(db, entry)])
+        projections.follow(db, entries)
+        kinds = {entry.fields()["kind"] for entry in entries}
+        if "device.enrolled" in kinds:  # its author may be one whose carried entries came before
+            self._unwrap(db)
+        elif CARRIED in kinds:
+            self._unwrap(db, [b64(e.hash) for e in entries if e.fields()["kind"] == CARRIED])
 
-    def _inner(self, db: sqlite3.Connection, entry: Entry) -> list[Entry]:
-        fields = entry.fields()
-        if fields["kind"] != CARRIED:
-            return [entry]
+    def _unwrap(self, db: sqlite3.Connection, names: Sequence[str] | None = None) -> None:
+        """Let page tables follow what those carried entries hold; all carried ones by default."""
+        if names is None:
+            rows = db.execute("SELECT hash FROM p_fact WHERE kind = ?", (CARRIED,)).fetchall()
+            names = [row[0] for row in rows]
+        found = (ledger.find(db, unb64(name)) for name in names)
+        inner = (self._inner(db, entry) for entry in found if entry is not None)
+        projections.follow(db, [entry for entry in inner if entry is not None])
+
+    def _inner(self, db: sqlite3.Connection, entry: Entry) -> Entry | None:
+        """Return the entry that a carried one holds, where its own author's signature is good."""
         try:
-            inner = carried(REALM, fields)
+            inner = carried(REALM, entry.fields())
             said = inner.fields()
             public = self.public_key(db, str(said["dev"]), str(said["key"]))
             if public is None:
-                return [entry]
+                return None
             verify(REALM, inner, public)
         except (BadEntry, KeyError, ValueError):
-            return [entry]
-        return [entry, inner]
+            return None
+        return inner
 
     def public_key(self, db: sqlite3.Connection, dev: str, key_id: str) -> bytes | None:
         """Return the enrolled public key of a device, this one's and central's included."""
@@ -510,7 +581,7 @@ class Store:
     def rebuild(self) -> int:
         """Make all page tables anew from the record; returns how many entries were read."""
         with self.transaction() as db:
-            return projections.rebuild(db, self._all_entries(db))
+            return self._rebuild(db)
 
     def replica(self) -> Replica:
         """Return this node's part in replication; its session lasts as long as the node."""
@@ -548,6 +619,17 @@ class Store:
     def _waiting(self, db: sqlite3.Connection, log: str) -> int:
         head, known = ledger.head(db, log), ledger.acknowledged(db, log)
         return (head.seq if head else 0) - (known.seq if known else 0)
+
+
+def _disk_failed(fault: BaseException) -> bool:
+    """Say whether the disk gave other bytes than it took, or none: then nothing more is written."""
+    if isinstance(fault, NotKept):
+        return True
+    code = getattr(fault, "sqlite_errorcode", 0) & 0xFF
+    return isinstance(fault, sqlite3.Error) and code in _DISK_CODES
+
+
+_DISK_CODES = (sqlite3.SQLITE_IOERR, sqlite3.SQLITE_CORRUPT, sqlite3.SQLITE_NOTADB)
 
 
 def _mark(fields: Mapping[str, Any]) -> str:

@@ -26,7 +26,7 @@ from fieldapp.domain.protocols import Protocol, read_protocol
 from fieldapp.domain.protocols.standing import Standing
 from fieldapp.domain.protocols.where import where
 from fieldapp.domain.recorded import Reading, Recorded
-from fieldapp.domain.stand import parse_duration
+from fieldapp.domain.timetext import parse_duration
 from fieldapp.projections.facts import LIVING, about, living, one
 from fieldapp.projections.findings import write_findings
 from fieldapp.projections.tables import put
@@ -36,10 +36,38 @@ _protocols: dict[str, Protocol] = {}
 
 def refresh(db: sqlite3.Connection, subjects: Iterable[str]) -> None:
     """Tell those subjects anew, and what hangs on them: a visit's bottles, a bottle's visits."""
-    wanted = _widened(db, set(subjects))
+    told = set(subjects)
+    wanted = _widened(db, told | _hanging(db, told))
     for what in ORDER:
         for subject in sorted(s for s in wanted if s.startswith(f"{what}:")):
             ORDER[what](db, subject.partition(":")[2])
+
+
+def _hanging(db: sqlite3.Connection, subjects: set[str]) -> set[str]:
+    """Return the visits and bottles told under a round or protocol that changes now.
+
+    They may have come before it: then they were told without its due time or its steps.
+    """
+    found: set[str] = set()
+    for what, table in (("round", "p_round"), ("protocol", "p_protocol")):
+        for subject in [s for s in subjects if s.startswith(f"{what}:")]:
+            name = subject.partition(":")[2]
+            rows = f"SELECT * FROM {table} WHERE {what} = ? ORDER BY 1"
+            before = db.execute(rows, (name,)).fetchall()
+            ORDER[what](db, name)
+            if db.execute(rows, (name,)).fetchall() != before:
+                found |= _beside(db, subject, "visit:") | _beside(db, subject, "bottle:")
+    return found
+
+
+def _beside(db: sqlite3.Connection, subject: str, start: str) -> set[str]:
+    """Return the subjects of that sort which stand in one fact with this subject."""
+    rows = db.execute(
+        "SELECT DISTINCT b.subject FROM p_about a JOIN p_about b USING (hash)"
+        " WHERE a.subject = ? AND b.subject >= ? AND b.subject < ?",
+        (subject, start, start + "\x7f"),
+    )
+    return {row[0] for row in rows}
 
 
 def _widened(db: sqlite3.Connection, subjects: set[str]) -> set[str]:
@@ -47,13 +75,7 @@ def _widened(db: sqlite3.Connection, subjects: set[str]) -> set[str]:
     wide = set(subjects)
     for start, end in (("bottle:", "visit:"), ("visit:", "bottle:")):
         for subject in [s for s in wide if s.startswith(start)]:
-            rows = db.execute(
-                "SELECT DISTINCT b.subject FROM p_about a JOIN p_about b USING (hash)"
-                " JOIN p_fact f USING (hash)"
-                " WHERE a.subject = ? AND b.subject >= ? AND b.subject < ?",
-                (subject, end, end + "\x7f"),
-            )
-            wide |= {row[0] for row in rows}
+            wide |= _beside(db, subject, end)
     return wide
 
 

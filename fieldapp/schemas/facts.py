@@ -44,6 +44,13 @@ _BY_NAME: dict[str, Any] = {
     "basis": validate.OneOf(("stated", "paper")), "toml": LONG, "orig": LONG, "deflated": LONG,
 }  # fmt: skip
 
+_EMPTY_ALLOWED = {
+    # a bare non-detect states no value
+    ("result.reported", "value"): validate.Regexp(
+        r"(-?\d+(\.\d+)?)?\Z", error="is neither a decimal text nor empty"
+    ),
+}
+
 
 class UnwritableFact(ValueError):
     """A fact of ours does not fit its own schema; a fault of the program, never of a person."""
@@ -75,12 +82,30 @@ def schema_of(kind: str) -> Schema:
     return schema(unknown=RAISE)
 
 
+class _Yes(fields.Field[bool]):
+    """True or false itself, nothing that passes for it."""
+
+    def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> bool:
+        if not isinstance(value, bool):
+            raise ValidationError("is neither true nor false")
+        return value
+
+
+class _Whole(fields.Field[int]):
+    """A whole number, and true is none."""
+
+    def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> int:
+        if not isinstance(value, int) or isinstance(value, bool):
+            raise ValidationError("is no whole number")
+        return value
+
+
 def _field(kind: str, key: str, hint: Any, required: bool, hidden: bool) -> fields.Field:
     origin, inner = typing.get_origin(hint), typing.get_args(hint)
     if hint is bool:
-        return fields.Boolean(required=required, truthy={True}, falsy={False})
+        return _Yes(required=required)
     if hint in (int, int | None):
-        return fields.Integer(required=required, strict=True)
+        return _Whole(required=required)
     if origin is tuple:
         return fields.List(_items(key, inner[0]), required=required)
     if origin is Mapping or (inner and typing.get_origin(inner[0]) is Mapping):
@@ -91,7 +116,7 @@ def _field(kind: str, key: str, hint: Any, required: bool, hidden: bool) -> fiel
 
 def _items(key: str, hint: Any) -> fields.Field:
     if hint is int:
-        return fields.Integer(strict=True)
+        return _Whole()
     if hint is str:
         return fields.String(validate=[CODE] if key == "bottles" else [SOME])
     return fields.Dict(keys=fields.String())
@@ -100,9 +125,8 @@ def _items(key: str, hint: Any) -> fields.Field:
 def _checks(kind: str, key: str, required: bool) -> list[Any]:
     if allowed := VOCABULARY.get((kind, key)):
         return [validate.OneOf(allowed)]
-    if key in _BY_NAME and (kind, key) not in _EMPTY_ALLOWED:
+    if (kind, key) in _EMPTY_ALLOWED:
+        return [_EMPTY_ALLOWED[kind, key]]
+    if key in _BY_NAME:
         return [_BY_NAME[key]]
     return [validate.Length(max=200)] if not required or key in ("from", "to") else []
-
-
-_EMPTY_ALLOWED = {("result.reported", "value")}
