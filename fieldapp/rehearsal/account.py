@@ -87,7 +87,11 @@ def account_of(central: Path, tablets: Iterable[Path], round_id: str, lines: lis
             entries=pages.count("SELECT COUNT(*) FROM entry"),
             photos=0,
             findings=[
-                {"kind": one["kind"], "about": one["about"], "says": said.finding(one)}
+                {
+                    "kind": one["kind"],
+                    "about": one["about"],
+                    "says": said.finding(one, row["zone"], now),
+                }
                 for one in pages.findings(now)
             ],
             ninetieth=_figures(pages, row, store),
