@@ -10,10 +10,13 @@ from datetime import timedelta
 from fieldapp.commands.asked import (
     NOW,
     Asked,
+    NotStarted,
+    StrangeAnswer,
     When,
     check_past,
     due_of,
     latest,
+    one_of,
     planned,
     refuse,
     standing_of,

@@ -24,7 +24,7 @@ SENTENCES = {
 
 EXACT = ("at", "about", "between", "unknown")
 KNOWN_BY = ("stated", "seen", "metered")
-WHERE = ("this-tap", "kitchen", "bath", "toilet", "laundry", "outside", "unsaid")
+WHERE = ("this-tap", "kitchen", "bath", "toilet", "laundry", "outside", "elsewhere", "unsaid")
 ABOUT = timedelta(minutes=15)
 """What "about" gives and takes on either side. Our choice: half the distance of two chips."""
 

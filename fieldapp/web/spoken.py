@@ -78,6 +78,7 @@ PLACES = {
     "toilet": N_("toilet"),
     "laundry": N_("washing machine"),
     "outside": N_("outside"),
+    "elsewhere": N_("elsewhere in the house"),
     "unsaid": N_("not said where"),
 }
 
@@ -144,12 +145,22 @@ PRESSES = {
 }
 """What an undo bar calls the last press, by the kind of its first entry."""
 
-PARTS = (
-    (5, N_("in the night")),
-    (12, N_("in the morning")),
-    (18, N_("in the afternoon")),
-    (24, N_("in the evening")),
-)
+PARTS = {
+    "today": (
+        (5, N_("in the night")),
+        (12, N_("this morning")),
+        (18, N_("this afternoon")),
+        (24, N_("this evening")),
+    ),
+    "yesterday": (
+        (5, N_("in the night before")),
+        (12, N_("yesterday morning")),
+        (18, N_("yesterday afternoon")),
+        (24, N_("yesterday evening")),
+    ),
+    "before": ((24, N_("before yesterday")),),
+}
+"""Parts of a day in words, each with the hour at which it ends."""
 
 
 def broken(fault: RuleBroken) -> str:
@@ -174,11 +185,9 @@ def _local(values: Mapping[str, Any]) -> dict[str, Any]:
 
 
 def part_of_day(chip: Chip) -> str:
-    """Return in words when a chip lies: ``this morning``, ``last evening``."""
+    """Return in words when a chip lies: ``this morning``, ``yesterday evening``."""
     hour = int(chip.local[11:13])
-    part = next(words.gettext(says) for until, says in PARTS if hour < until)
-    day = {"today": N_("today"), "yesterday": N_("yesterday"), "before": N_("before yesterday")}
-    return f"{words.gettext(day[chip.day])}, {part}"
+    return next(words.gettext(says) for until, says in PARTS[chip.day] if hour < until)
 
 
 def chip_groups(chips: Sequence[Chip]) -> list[tuple[str, list[Chip]]]:

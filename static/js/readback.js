@@ -8,7 +8,7 @@ const MINUTE_MS = 60_000
 export function startReadback(root = document) {
   const form = root.querySelector("form[data-readback]")
   if (!form || !startNodeTime(root)) return
-  const place = form.querySelector("[data-readback-here]")
+  const place = root.querySelector("[data-readback-here]")
   const said = form.elements.namedItem("said")
   const show = () => {
     const text = spoken(form)
@@ -16,7 +16,7 @@ export function startReadback(root = document) {
     place.textContent = text
     // only what was read back on this page may be recorded without another page
     said.value = text ? "yes" : ""
-    form.querySelectorAll("[data-says-read]").forEach(button => {
+    root.querySelectorAll("[data-says-read]").forEach(button => {
       button.textContent = text ? button.dataset.saysRead : button.dataset.saysUnread
     })
   }
