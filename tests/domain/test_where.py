@@ -133,6 +133,19 @@ def test_a_visit_that_is_left_goes_on_where_it_was():
     assert (kitchen.where().state, kitchen.due.question) == ("open", "aerator")
 
 
+def test_another_tablet_resumes_a_visit_though_its_clock_is_slow():
+    kitchen = Kitchen().until("ask", question="aerator")
+    kitchen.record(facts.VisitLeft, why="waiting")
+    kitchen.log = "log-b"
+    kitchen.at -= timedelta(hours=3)
+    kitchen.obey()
+
+    assert (kitchen.where().state, kitchen.due.question) == ("open", "aerator")
+    kitchen.wait(hours=4)
+    kitchen.record(facts.VisitLeft, why="waiting")
+    assert kitchen.where().state == "left"
+
+
 @pytest.mark.parametrize(
     ("question", "answer", "outcome", "deviations"),
     [
@@ -277,6 +290,30 @@ def test_a_sheet_typed_in_later_keeps_the_order_of_its_times():
 
     assert kitchen.deviations() == []
     assert kitchen.where().stand.shortest == timedelta(hours=8, minutes=3)
+
+
+def test_a_bottle_scanned_now_for_a_filling_typed_from_paper_is_in_order():
+    kitchen = Kitchen().until("set")
+    kitchen.wait(hours=3)
+    kitchen.obey()
+    kitchen.record(
+        facts.BottleFilled, bottle="BOTTLE-1", draw=1, fill="line", basis="paper",
+        done_at="2027-05-04T12:03:00.000Z",
+    )  # fmt: skip
+
+    assert kitchen.deviations() == []
+
+
+def test_a_scan_typed_after_the_filling_keeps_the_order_of_its_times():
+    kitchen = Kitchen().until("set")
+    kitchen.wait(minutes=10)
+    kitchen.record(facts.BottleFilled, bottle="B", draw=1, fill="line")
+    kitchen.record(
+        facts.BottleSet, bottle="B", draw=1, kind_="first-draw", purpose="compliance",
+        basis="paper", done_at="2027-05-04T12:05:00.000Z",
+    )  # fmt: skip
+
+    assert kitchen.deviations() == []
 
 
 def test_another_bottle_than_the_one_set_is_a_deviation():

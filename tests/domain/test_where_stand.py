@@ -149,10 +149,11 @@ def test_a_later_use_bars_again_what_was_excused_before():
     assert kitchen.due.kind == "wait"
 
 
-def test_two_vague_uses_give_the_bounds_of_the_later_one():
+@pytest.mark.parametrize("told", [((9, 7), (8, 8)), ((8, 8), (9, 7))])
+def test_two_vague_uses_give_the_bounds_of_the_later_one(told):
     kitchen = Kitchen().until("last-use")
-    kitchen.used(kitchen.at - 9 * HOUR, kitchen.at - 7 * HOUR, exact="between")
-    kitchen.used(kitchen.at - 8 * HOUR, kitchen.at - 8 * HOUR)
+    for earliest, latest in told:
+        kitchen.used(kitchen.at - earliest * HOUR, kitchen.at - latest * HOUR, exact="between")
 
     stand = kitchen.where().stand
     assert (stand.shortest, stand.longest) == (7 * HOUR, 8 * HOUR)
@@ -304,6 +305,24 @@ def test_what_was_short_stays_short_when_more_is_told():
     assert kitchen.kinds() == ["stand-short", "tap-used-in-stand"]
 
 
+def test_an_older_use_told_after_a_short_draw_accuses_nobody_of_using_the_tap():
+    kitchen = asked(5 * HOUR)
+    kitchen.record(facts.BottleFilled, bottle="B", draw=1, fill="line", who_drew="resident")
+    kitchen.used(kitchen.at - 9 * HOUR)
+
+    assert kitchen.kinds() == ["stand-short"]
+
+
+def test_closing_the_tap_after_a_run_is_no_use_before_it():
+    kitchen = Kitchen("first-and-fifth", PAIR).until("tap")
+    kitchen.record(facts.TapClosed, draws=(1, 2, 3, 4, 5))
+    kitchen.obey()
+    kitchen.record(facts.BottleFilled, bottle="BOTTLE-1", draw=1, fill="line")
+
+    assert kitchen.where().stand.shortest == 8 * HOUR
+    assert "stand-short" not in kitchen.kinds()
+
+
 def test_a_use_taken_back_takes_its_deviation_with_it():
     kitchen = Kitchen().until("sign")
     used = kitchen.used(kitchen.at - HOUR)
@@ -445,3 +464,31 @@ def test_a_press_after_the_draw_does_not_say_when_water_ran_before_it():
     assert kitchen.due.kind == "last-use"
     kitchen.obey()
     assert kitchen.kinds() == ["stand-short"]
+
+
+def test_once_drawn_there_is_no_earliest_draw_any_more():
+    kitchen = Kitchen().until("fill")
+    assert kitchen.where().earliest_draw == kitchen.at - 2 * HOUR
+    kitchen.obey()
+
+    assert kitchen.where().earliest_draw is None
+
+
+def test_a_visit_closed_without_its_draw_has_no_stand():
+    kitchen = asked(5 * HOUR)
+    kitchen.record(facts.VisitClosed, outcome="not-possible")
+    kitchen.wait(hours=9)
+
+    standing = kitchen.where()
+    assert (standing.stand, standing.stand_verdict, standing.earliest_draw) == (None, "", None)
+    assert standing.deviations == ()
+
+
+@pytest.mark.parametrize(("slow", "question"), [(5, ""), (30, "stand-doubt")])
+def test_an_answer_on_a_tablet_that_is_some_minutes_slow_holds(slow, question):
+    kitchen = asked(7 * HOUR, unsure=2 * HOUR)
+    kitchen.log = "log-b"
+    kitchen.at -= slow * MINUTE
+    kitchen.obey("draw-now")
+
+    assert kitchen.due.question == question

@@ -34,6 +34,7 @@ class Kitchen:
     last_use: timedelta = timedelta(hours=8)
     log: str = "log-a"
     boot: str = "boot-1"
+    skew: timedelta = timedelta(0)
     mono: int = 5_000_000
     entries: list[Recorded] = field(default_factory=list)
     heads: dict[str, int] = field(default_factory=dict)

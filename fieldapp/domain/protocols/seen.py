@@ -2,7 +2,7 @@
 
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass
-from datetime import UTC, datetime
+from datetime import UTC, datetime, timedelta
 from typing import Any
 
 from fieldapp.domain.bottles import in_order
@@ -32,6 +32,9 @@ from fieldapp.domain.protocols.steps import CONSENT
 from fieldapp.domain.recorded import Recorded
 from fieldapp.domain.stand import Mark
 
+CLOCKS_APART = timedelta(minutes=10)
+"""Clocks of two devices may be apart so far before an answer to one is asked for again on the
+other. Our choice; it excuses nothing, for a draw is judged by its times alone."""
 AGREED, REFUSED = "agreed", "refused"
 
 
@@ -96,12 +99,37 @@ class Seen:
         self.issued: dict[str, BottleIssued] = {}
         self.stated: list[Noted] = []
         self.signed: set[str] = set()
-        self.begun = self.left = self.use_stated = False
+        self.begun = self.use_stated = False
+        self.comings: list[Noted] = []
         self.shut: Noted | None = None
         self.closed: Noted | None = None
-        ordered = in_order({one.hash: one for one in recorded}.values())
-        for position, entry in enumerate(ordered):
+        self.entries = in_order({one.hash: one for one in recorded}.values())
+        for position, entry in enumerate(self.entries):
             self._take(entry, position, visit)
+
+    @property
+    def left(self) -> bool:
+        """The visit was left and not resumed.
+
+        Who resumes has seen that it was left, so a leaving is answered by a resuming though the
+        clock of another device puts that first.
+        """
+        if not self.comings or not isinstance(self.comings[-1].fact, VisitLeft):
+            return False
+        kinds = [type(one.fact) for one in self.comings]
+        return kinds.count(VisitLeft) > kinds.count(VisitResumed)
+
+    def since(self, position: int, earlier: int, bound: timedelta) -> bool:
+        """Say whether an entry was recorded after an earlier one, or may have been.
+
+        Within a log its order says so; between devices only clocks do, and they may be apart.
+        """
+        if earlier < 0 or position < 0:
+            return position > earlier
+        one, other = self.entries[position], self.entries[earlier]
+        if one.log == other.log:
+            return one.seq > other.seq
+        return one.at > other.at - max(bound, CLOCKS_APART)
 
     def in_force(self, given: Iterable[Answer]) -> dict[str, Answer]:
         """Return the answer that holds for each question: the last one recorded."""
@@ -142,8 +170,8 @@ class Seen:
         self.begun = True
         take(self, noted(entry, position))
 
-    def _open(self, one: Noted) -> None:
-        self.left = isinstance(one.fact, VisitLeft)
+    def _come(self, one: Noted) -> None:
+        self.comings.append(one)
 
     def _close(self, one: Noted) -> None:
         self.closed = self.closed or one
@@ -206,9 +234,9 @@ class Seen:
 
 
 TAKES: dict[type[Fact], Callable[[Seen, Noted], None]] = {
-    VisitOpened: Seen._open,
-    VisitLeft: Seen._open,
-    VisitResumed: Seen._open,
+    VisitOpened: Seen._come,
+    VisitLeft: Seen._come,
+    VisitResumed: Seen._come,
     VisitClosed: Seen._close,
     OccupantAgreed: Seen._agree,
     QuestionAnswered: Seen._answer,

@@ -99,7 +99,8 @@ class Visit:
     def answered_since(self, question: str, position: int) -> str:
         """Return the answer in force, empty if it was given before that position."""
         found = self.answers.get(question)
-        return found.answer if found and found.position > position else ""
+        since = found is not None and self.seen.since(found.position, position, self.bound)
+        return found.answer if found and since else ""
 
     def ran_enough(self, step: Run, before: Noted | None) -> bool:
         """Say whether the water ran to waste long enough before that fact."""

@@ -5,7 +5,7 @@ answer. What has happened is never refused (R1); it comes back as a deviation.
 """
 
 from collections.abc import Iterable, Mapping, Sequence
-from datetime import timedelta
+from datetime import datetime, timedelta
 
 from fieldapp.domain.facts import DrawPoured, VisitPlanned
 from fieldapp.domain.protocols.found import deviations
@@ -69,7 +69,7 @@ def where(
         deviations=deviations(visit),
         stand=told.stand if told else None,
         stand_verdict=told.verdict(rule) if told and rule else "",
-        earliest_draw=told.enough_at(rule) if told and rule else None,
+        earliest_draw=_earliest_draw(visit, rule, told),
         stopped=stopped,
         answers={question: one.answer for question, one in visit.answers.items()},
         beyond=protocol.beyond(),
@@ -266,11 +266,24 @@ def _wait(filling: Filling, rule: StandRule, told: Stood | None = None) -> Due:
 
 
 def _stand(visit: Visit) -> tuple[StandRule | None, Stood | None]:
-    """Return the stand that pages show: before the first draw that asks for one."""
+    """Return the stand that pages show: before the first draw that asks for one.
+
+    A visit closed without that draw has none: nothing ended it.
+    """
     for filling in visit.fillings:
         if filling.rule:
-            return filling.rule, visit.stood(filling)
+            drawn = visit.seen.began(filling.draws)
+            told = visit.stood(filling) if drawn or not visit.seen.closed else None
+            return filling.rule, told
     return None, None
+
+
+def _earliest_draw(visit: Visit, rule: StandRule | None, told: Stood | None) -> datetime | None:
+    """Return when the stand is long enough for sure, None once the draw has begun."""
+    if rule is None or told is None:
+        return None
+    begun = any(visit.seen.began(one.draws) for one in visit.fillings if one.rule == rule)
+    return None if begun else told.enough_at(rule)
 
 
 def _draws(visit: Visit) -> Iterable[DrawStanding]:
