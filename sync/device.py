@@ -313,8 +313,10 @@ def _take_tails(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
             continue
         run.carried += outcome.carried
         run.pulled += outcome.fresh
+        moved |= (
+            outcome.fresh > 0 or outcome.carried > 0 or outcome.common not in (None, run.fetch[log])
+        )
         run.fetch[log] = outcome.common or run.fetch[log]
-        moved |= bool(entries)
     return moved
 
 
@@ -332,6 +334,9 @@ def _take_pull(
             for one in sent:
                 try:
                     entries.append(_pulled(replica, db, log, one))
+                    past = wire.read_head(request["have"][scope].get(log) or {"seq": 0})
+                    if past is not None and entries[-1].seq <= past.seq:
+                        raise NoContact("it sends again what this device has")
                 except BadEntry as fault:
                     _hold_back(run, log, fault)
                     moved = True
