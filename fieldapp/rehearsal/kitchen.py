@@ -13,7 +13,10 @@ WATER_LOT = "LW-0001"
 
 
 class Visit:
-    """One visit as the script tells it; ``codes`` holds the bottle of each labelled draw."""
+    """One visit as the script tells it; ``codes`` holds the bottle of each labelled draw.
+
+    ``carried`` names the draws whose bottles leave the house with water in them.
+    """
 
     def __init__(
         self,
@@ -27,6 +30,7 @@ class Visit:
         self.browser, self.time, self.visit, self.script = browser, time, visit, script
         self.codes, self.signer = dict(codes), signer
         self._unset, self._drawn = sorted(codes), 1
+        self.carried: list[int] = []
         self.arrived = time.now()
 
     @property
@@ -69,9 +73,11 @@ class Visit:
         """Say how full each bottle is, as scripted."""
         runs = [name for name in form.choices if name.startswith("fill_")]
         if runs:
-            return {name: self.script.fill_of(int(name[5:])) for name in runs}
-        draw = self._drawn
-        return {"fill": self.script.fill_of(draw)}
+            draws = [int(name[5:]) for name in runs]
+            self.carried += [draw for draw in draws if draw in self.codes]
+            return {f"fill_{draw}": self.script.fill_of(draw) for draw in draws}
+        self.carried.append(self._drawn)
+        return {"fill": self.script.fill_of(self._drawn)}
 
     def _answer(self, form: Form) -> dict[str, str]:
         """Answer as scripted, else as expected: that is the first answer offered."""
@@ -104,7 +110,9 @@ class Visit:
     def _blank(self, form: Form) -> dict[str, str]:
         given = {"water_lot": WATER_LOT}
         if "code" in form.fields:
-            given["code"] = self.codes[self._unset.pop(0)]
+            self._drawn = self._unset.pop(0)
+            given["code"] = self.codes[self._drawn]
+        self.carried.append(self._drawn)
         return given
 
     def _sign(self, form: Form) -> dict[str, str]:

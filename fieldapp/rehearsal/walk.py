@@ -78,6 +78,7 @@ class _Walk:
         self.time = Time(planned.round.zone)
         self.days = sorted(planned.routes, key=lambda one: (one.day, one.route))
         self.codes: Codes = {}
+        self.drawn: set[tuple[str, int]] = set()
         self.lines: list[str] = []
 
     @property
@@ -152,6 +153,7 @@ class _Walk:
                     self.time.until(arrival)
                 visit = self._visit(browser, planned.visit, route.sampler)
             back = visit.walk()
+            self.drawn |= {(visit.visit, draw) for draw in visit.carried}
             if back is not None:
                 left.append((back, visit))
 
@@ -170,21 +172,21 @@ class _Walk:
         browser = Browser(central)
         _choose(browser, self._person("clerk"))
         page = browser.open("/bench/")
-        for place, code in enumerate(self.codes.values()):
+        for code, number in self._cooler().values():
             form = page.main()
             assert form is not None
-            number = self.script.number(place)
             page = browser.press(page, form, {"bottle": code, "laboratory_number": number})
-        self._tell(f"Bench: {len(self.codes)} bottles scanned.")
+        self._tell(f"Bench: {len(self.drawn)} bottles scanned.")
+
+    def _cooler(self) -> dict[tuple[str, int], tuple[str, str]]:
+        """Return code and laboratory number of each bottle that came, by visit and draw."""
+        came = [place for place in self.codes if place in self.drawn]
+        return {place: (self.codes[place], self.script.number(n)) for n, place in enumerate(came)}
 
     def _results(self) -> None:
         """Import the laboratory's file at central, over its own door for commands."""
         self.time.until(self.time.now() + TO_THE_RESULTS)
-        received = {
-            place: (code, self.script.number(n))
-            for n, (place, code) in enumerate(self.codes.items())
-        }
-        table = self.script.results_csv(received)
+        table = self.script.results_csv(self._cooler())
         if table.count("\n") < 2:
             return
         raw = base64.b64encode(table.encode()).decode()
