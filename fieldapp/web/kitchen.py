@@ -112,8 +112,17 @@ def resume_visit(visit: str) -> Answer:
 
 @bp.post("/visits/<visit>/leave")
 def leave_visit(visit: str) -> Answer:
-    """Leave it, in one press."""
-    return act(visit, forms.LeaveForm, kitchen.leave_visit, "why", "reason")
+    """Leave it, in one press; while the water stands, the way leads on to the next stop."""
+    form = load(forms.LeaveForm)
+    known = form["go"] if pages().visit(form["go"]) else ""
+    return act_timed(
+        visit,
+        lambda p, r, when: kitchen.leave_visit(
+            p, r, visit, why=form["why"], reason=form["reason"], when=when
+        ),
+        form,
+        then=known,
+    )
 
 
 @bp.post("/visits/<visit>/answer")

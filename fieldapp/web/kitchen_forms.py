@@ -34,6 +34,7 @@ class LeaveForm(WhenForm):
         required=True, validate=validate.OneOf(kitchen.LEAVE_WHYS, error="Choose a reason.")
     )
     reason = fields.String(load_default="", validate=NOTE)
+    go = fields.String(load_default="", validate=validate.Length(max=80))
 
 
 class AnswerForm(WhenForm):

@@ -1,7 +1,7 @@
 """What the Kitchen's pages show: a day's stops, and one visit with its present step."""
 
 from collections.abc import Mapping, Sequence
-from datetime import UTC, datetime, timedelta
+from datetime import UTC, date, datetime, timedelta
 from functools import partial
 from typing import Any
 from zoneinfo import ZoneInfo
@@ -12,7 +12,7 @@ from fieldapp.commands import drawing, kitchen, last_use
 from fieldapp.commands.asked import latest, planned, standing_of
 from fieldapp.domain.bottles import in_order
 from fieldapp.domain.deviations import stated_kinds
-from fieldapp.domain.facts import TapOpened, VisitClosed, VisitLeft, WaterUsed
+from fieldapp.domain.facts import TapOpened, VisitClosed, VisitLeft, VisitOpened, WaterUsed
 from fieldapp.domain.protocols.standing import Standing
 from fieldapp.domain.recorded import Recorded
 from fieldapp.domain.timetext import chips
@@ -67,7 +67,7 @@ def gather(visit: str) -> dict[str, Any]:
         "due": due,
         "draws": {one.draw: one for one in told.draws},
         "protocol": protocol,
-        "in_force": protocol is None or protocol.in_force_on(_day(zone)),
+        "in_force": protocol is None or protocol.in_force_on(_day(zone, begun(recorded))),
         "site": pages().site(plan.site, plan.round, private=told.state != "closed") or {},
         "rail": rail(told.draws, (due.next_draw,) if due.next_draw else hands),
         "undo": undo(recorded, zone),
@@ -75,8 +75,9 @@ def gather(visit: str) -> dict[str, Any]:
         "use_says": _use_says(recorded, zone),
         "left_entry": latest(recorded, VisitLeft),
         "expected": _expected(visit, told),
-        "until_says": _up(due.until) if due.until else "",
-        "left_says": _up(told.earliest_draw) if told.earliest_draw else "",
+        "until_says": _up(due.until) if due.until else ("", ""),
+        "left_says": _up(told.earliest_draw) if told.earliest_draw else ("", ""),
+        "meanwhile": _meanwhile(plan.route, visit) if due.kind == "wait" else None,
         **_taken(told, recorded),
         "back": url_for("kitchen.route", route=plan.route),
     }
@@ -97,13 +98,19 @@ def _taken(told: Standing, recorded: Sequence[Recorded]) -> dict[str, Any]:
     }
 
 
+def begun(recorded: Sequence[Recorded]) -> datetime | None:
+    """Return when the visit began, None while it has not."""
+    opened = latest(recorded, VisitOpened)
+    return opened.done_at if opened else None
+
+
 def undo(recorded: Sequence[Recorded], zone: str) -> dict[str, str]:
     """Return the last press of this person on the visit, for the bar that takes it back."""
     acts = [one for one in recorded if one.fact.place == "kitchen"]
     if not acts or acts[-1].by != person() or not person():
         return {}
     first = next(one for one in acts if one.act == acts[-1].act)
-    named = acts[-1] if first.fact.kind == "deviation.stated" else first
+    named = first if first.fact.kind == "tap.closed" else acts[-1]
     return {"of": acts[-1].hash, "says": spoken.press(named, zone)}
 
 
@@ -169,8 +176,14 @@ def _stop(row: Row) -> dict[str, Any]:
         "title": protocol.title if protocol else row["protocol"],
         "bottles": len(plan.draws) if plan else 0,
         "left_why": getattr(left.fact, "why", "") if left else "",
-        "left_says": _up(datetime.fromisoformat(earliest)) if earliest else "",
+        "left_says": _up(datetime.fromisoformat(earliest)) if earliest else ("", ""),
     }
+
+
+def _meanwhile(route: str, visit: str) -> Mapping[str, Any] | None:
+    """Return the stop to go on with while the water stands here."""
+    others = [one for one in stops_of(route) if one["visit"] != visit]
+    return next_of([one for one in others if one["state"] != "left"])
 
 
 def _only_waits(told: Standing) -> bool:
@@ -202,16 +215,15 @@ def _expected(visit: str, told: Standing) -> list[str]:
     ]
 
 
-def _up(until: datetime) -> str:
-    """Return the time left, a begun minute as a whole one."""
+def _up(until: datetime) -> tuple[str, str]:
+    """Return the time left, a begun minute as a whole one: the figure, and its unit if any."""
     left = spoken.short_of(until, reading().at)
-    minutes = -(-left // MINUTE)
-    hours, rest = divmod(minutes, 60)
-    return f"{hours} h {rest:02d}" if hours else f"{rest} min"
+    hours, minutes = divmod(-(-left // MINUTE), 60)
+    return (f"{hours} h {minutes:02d}", "") if hours else (str(minutes), "min")
 
 
-def _day(zone: str) -> Any:
-    return reading().at.astimezone(ZoneInfo(zone)).date()
+def _day(zone: str, at: datetime | None = None) -> date:
+    return (at or reading().at).astimezone(ZoneInfo(zone)).date()
 
 
 def today(zone: str) -> str:

@@ -36,16 +36,19 @@ def act(
     return act_timed(visit, lambda p, r, when: command(p, r, visit, **given, when=when), form)
 
 
-def act_timed(visit: str, decide: Timed, form: Mapping[str, Any]) -> Answer:
+def act_timed(visit: str, decide: Timed, form: Mapping[str, Any], *, then: str = "") -> Answer:
     """Record what ``decide`` answers, told when it was done by the form."""
     zone = shown_as.zone_of(visit)
-    return press(visit, lambda p, r: decide(p, r, forms.when_of(form, zone)))
+    return press(visit, lambda p, r: decide(p, r, forms.when_of(form, zone)), then=then)
 
 
-def press(visit: str, decide: Decide) -> Answer:
-    """Record, then go to the present step; a broken rule is said above it, nothing recorded."""
+def press(visit: str, decide: Decide, *, then: str = "") -> Answer:
+    """Record, then go to the present step of that visit, or of the one ``then`` names.
+
+    A broken rule is said above the step; nothing was recorded.
+    """
     shown_as.zone_of(visit)
-    then = url_for("kitchen.visit", visit=visit)
+    then = url_for("kitchen.visit", visit=then or visit)
     try:
         return perform(decide, then=then)
     except NotDue as fault:

@@ -105,6 +105,13 @@ VOID_WHYS = {
     "other": N_("something else"),
 }
 
+FILLS = {
+    "line": N_("Full to the line"),
+    "below": N_("Below"),
+    "over": N_("Over"),
+    "spilled": N_("Spilled"),
+}
+
 DEVIATIONS = {
     "stand-short": N_("Stood too short"),
     "stand-long": N_("Stood too long"),
@@ -120,6 +127,8 @@ DEVIATIONS = {
     "low-flow": N_("Only a thin stream"),
     "narrow-mouth": N_("Narrow bottle"),
     "interrupted-flow": N_("The stream was interrupted"),
+    "wrong-bottle": N_("A bottle of elsewhere"),
+    "wrong-order": N_("Filled in another order"),
     "other": N_("Something else"),
 }
 

@@ -3,7 +3,7 @@
 export function startScan(root = document) {
   const field = root.querySelector("[data-scan]")
   if (!field) return
-  field.focus({ preventScroll: true })
+  if (!field.autofocus) field.focus({ preventScroll: true })
   root.addEventListener("keydown", event => {
     const elsewhere = event.target.closest?.("input, select, textarea, button, a, summary")
     if (elsewhere || event.ctrlKey || event.altKey || event.metaKey) return
