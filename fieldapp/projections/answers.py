@@ -57,6 +57,22 @@ def figure(answer: Answer, *, over: bool) -> Figure:
     return Figure(answer, come, expected, running=bool(waiting) and not over)
 
 
+def withheld(pages: Pages, round_id: str) -> dict[str, int]:
+    """Count the bottles decided against before any result, by the direction of their bias (R8).
+
+    ``either`` also stands for deviations that bend both ways, ``none`` for a bottle held for
+    what the clerk saw.
+    """
+    visits = {visit["visit"]: visit for visit in pages.visits(round_id=round_id)}
+    counts: dict[str, int] = {}
+    for bottle in pages.bottles(round_id=round_id):
+        if bottle["decided"] == "leave":
+            found = {str(d["bias"]) for d in deviations_on(visits.get(bottle["visit"]), bottle)}
+            bias = "none" if not found else found.pop() if len(found) == 1 else "either"
+            counts[bias] = counts.get(bias, 0) + 1
+    return counts
+
+
 def candidates(pages: Pages, row: Row, rule: Rule) -> list[Candidate]:
     """Return a candidate for each bottle and analyte, those that came and those awaited."""
     visits = {visit["visit"]: visit for visit in pages.visits(round_id=row["round"])}

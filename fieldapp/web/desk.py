@@ -86,6 +86,7 @@ def one_round(round_id: str) -> str:
     return render_template(
         "desk/round.html", round=row, rule=rules.load(row["rule"]), show=show, visits=visits,
         totals=rounds.totals(pages(), round_id), figures=answers.figures(pages(), row, now),
+        withheld=answers.withheld(pages(), round_id),
         bottles=rounds.bottles(pages(), round_id, show) if show in rounds.LISTS else [],
         open_findings=[_told(one, zone) for one in found if not one["settled"]],
         settled=[_told(one, zone) for one in found if one["settled"]],

@@ -125,6 +125,13 @@ ENTRIES = {
     "entry.withdrawn": N_("Taken back"),
 }
 
+WITHHELD = {
+    "low": N_("{n} that bends low"),
+    "high": N_("{n} that bends high"),
+    "either": N_("{n} that may bend either way"),
+    "none": N_("{n} without a known direction"),
+}
+
 FILLS = {
     "line": N_("to the line"),
     "below": N_("below the line"),
@@ -185,6 +192,12 @@ def entry(recorded: Recorded) -> str:
     if "analyte" in values:
         values["analyte"] = words.word(str(values["analyte"]))
     return words.say(ENTRIES, given.kind, values) if given.kind in ENTRIES else given.kind
+
+
+def withheld(counts: Mapping[str, int]) -> str:
+    """Return how many bottles were not analysed by decision, by the direction of their bias."""
+    parts = [of(WITHHELD, bias).format(n=counts[bias]) for bias in WITHHELD if bias in counts]
+    return ", ".join(parts)
 
 
 def basis(recorded: Recorded) -> str:

@@ -198,6 +198,17 @@ def test_decided_against_before_a_result_stays_out_for_good(node):
     assert reasons(node)["Q-0401"] == "not-analysed"
 
 
+def test_what_was_not_analysed_is_counted_by_the_direction_of_its_bias(node):
+    node.deviate("Q-0401")
+    for site in ("Q-0401", "Q-0402"):
+        node.fill(site)
+        code = node.codes[site]
+        node.record(BottleReceived(bottle=code, outcome="held", reason="looked at"))
+        node.record(AnalysisDecided(bottle=code, analyse=False, reason="not worth it"))
+    with node.pages() as pages:
+        assert answers.withheld(pages, "spring") == {"low": 1, "none": 1}
+
+
 def test_a_deviation_keeps_a_result_in_where_the_rule_counts_it(node):
     node.deviate("Q-0401")
     node.fill("Q-0401")

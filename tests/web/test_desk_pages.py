@@ -133,6 +133,8 @@ def test_a_held_bottle_is_decided_with_a_reason(busy, desk):
     page = words(desk.land(here, f"{here}/decide", analyse="no", reason="the cap was loose"))
     assert "Decided: do not analyse" in page
     assert busy.bottle("Q-0402")["decided"] == "leave"
+    said = "Not analysed, as decided before any result: 1 without a known direction."
+    assert said in words(desk.read(ROUND))
 
 
 def test_after_a_result_no_decision_is_offered_or_taken(busy, desk):
