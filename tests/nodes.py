@@ -259,13 +259,19 @@ def latest(store: Store, subject: str, kind: str) -> Recorded:
 def work_a_day(pair: Pair) -> None:
     """Work the shipped day at both nodes, with what goes wrong on such a day.
 
-    A filling is corrected twice, a receipt withdrawn and made again, results differ, a bottle is
-    received that nobody here issued, one finding is settled twice.
+    A filling is corrected twice, a correction and a withdrawal are taken back, a receipt is
+    withdrawn and made again, results differ, a bottle is received that nobody here issued, one
+    finding is settled twice.
     """
     for visit in ("V-0401", "V-0402", "V-0404", "V-0405"):
         walk(pair, visit)
     obey(pair, "V-0403")
     press(pair.tablet, _half_full(pair, "V-0401", "below"), by=SAMPLER)
+    (corrected,) = press(pair.tablet, _half_full(pair, "V-0402", "spilled")).entries
+    press(pair.tablet, EntryWithdrawn(of=corrected, reason="it was full"))
+    signed = latest(pair.tablet, "visit:V-0405", "visit.signed")
+    (unsigned,) = press(pair.tablet, EntryWithdrawn(of=signed.hash, reason="wrong hand")).entries
+    press(pair.tablet, EntryWithdrawn(of=unsigned, reason="right hand"))
     pair.exchange()
     pair.clock.wait(hours=2)
     codes = _filled(pair)

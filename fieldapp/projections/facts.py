@@ -16,7 +16,12 @@ _COLUMNS = (
     "f.hash, f.kind, f.log, f.seq, f.at, f.off, f.mono, f.boot, f.by, f.act, f.replaces, f.data"
 )
 _HIDDEN = " LEFT JOIN private v ON v.h = f.priv"
-LIVING = "NOT EXISTS (SELECT 1 FROM p_gone g WHERE g.hash = f.hash)"
+STANDING_ANSWER = (
+    "NOT EXISTS (SELECT 1 FROM p_gone w WHERE w.hash = g.by_hash AND w.how = 'withdrawn')"
+)
+"""Of a row ``g`` of ``p_gone``: what replaced or withdrew the entry was not itself taken back."""
+LIVING = f"NOT EXISTS (SELECT 1 FROM p_gone g WHERE g.hash = f.hash AND {STANDING_ANSWER})"
+"""Of a row ``f`` of ``p_fact``: nothing that stands replaces or withdraws it."""
 
 
 def take(db: sqlite3.Connection, name: str, body: Mapping[str, Any]) -> set[str]:
@@ -82,8 +87,13 @@ def _unread(db: sqlite3.Connection, name: str, body: Mapping[str, Any], says: st
 
 
 def _subjects_of(db: sqlite3.Connection, name: str) -> set[str]:
-    rows = db.execute("SELECT subject FROM p_about WHERE hash = ?", (name,))
-    return {row[0] for row in rows}
+    """Return what an entry is about; of an answer also what the answered entry is about."""
+    rows = db.execute("SELECT subject FROM p_about WHERE hash = ?", (name,)).fetchall()
+    found = {row[0] for row in rows}
+    answered = db.execute("SELECT hash FROM p_gone WHERE by_hash = ?", (name,)).fetchall()
+    for (of,) in answered:
+        found |= {f"entry:{of}"} | _subjects_of(db, of)
+    return found
 
 
 def about(

@@ -5,6 +5,7 @@ import sqlite3
 from collections.abc import Sequence
 
 from fieldapp.domain.reconcile import Finding
+from fieldapp.projections.facts import LIVING
 
 
 def write_findings(
@@ -16,8 +17,7 @@ def write_findings(
         settled = db.execute(
             "SELECT f.hash FROM p_about a JOIN p_fact f USING (hash) WHERE a.subject = ?"
             " AND f.kind = 'finding.settled'"
-            " AND NOT EXISTS (SELECT 1 FROM p_gone g WHERE g.hash = f.hash)"
-            " ORDER BY f.at DESC, f.log DESC, f.seq DESC",
+            f" AND {LIVING} ORDER BY f.at DESC, f.log DESC, f.seq DESC",
             (f"finding:{finding.id}",),
         ).fetchone()
         db.execute(

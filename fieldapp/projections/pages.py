@@ -146,7 +146,9 @@ class Pages:
         """Return which of those entries were replaced or withdrawn, and by which."""
         found = {}
         for name in names:
-            row = self.row("SELECT * FROM p_gone WHERE hash = ?", (name,))
+            row = self.row(
+                f"SELECT * FROM p_gone g WHERE g.hash = ? AND {facts.STANDING_ANSWER}", (name,)
+            )
             if row:
                 found[name] = row
         return found

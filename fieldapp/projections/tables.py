@@ -10,7 +10,7 @@ import sqlite3
 
 from sqlite_utils import Database
 
-VERSION = 1
+VERSION = 2
 """Raise it when a summary changes; a node with older page tables rebuilds them at start."""
 
 TEXT, INT, BLOB = str, int, bytes
@@ -167,7 +167,8 @@ TABLES: dict[str, tuple[dict[str, type], str | tuple[str, ...]]] = {
 }
 
 INDEXES: dict[str, tuple[tuple[str, ...], ...]] = {
-    "p_fact": (("kind",), ("log", "seq")),
+    "p_fact": (("kind",), ("log", "seq"), ("replaces",)),
+    "p_gone": (("by_hash",),),
     "p_visit": (("route",), ("round",), ("site",)),
     "p_bottle": (("round",), ("visit",), ("route",)),
     "p_finding": (("round",), ("subject",)),
