@@ -67,6 +67,9 @@ class Asked(Protocol):
     ) -> Sequence[Mapping[str, Any]]:
         """Return the bottles of a visit."""
 
+    def story(self, subject: str) -> list[Recorded]:
+        """Return everything recorded about a subject."""
+
     def fact(self, name: str) -> Recorded | None:
         """Return one entry's fact."""
 

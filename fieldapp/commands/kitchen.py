@@ -15,7 +15,6 @@ from fieldapp.commands.asked import (
     When,
     check_past,
     due_of,
-    latest,
     one_of,
     planned,
     refuse,
@@ -25,6 +24,7 @@ from fieldapp.domain.bottles import in_order
 from fieldapp.domain.deviations import DEVIATIONS
 from fieldapp.domain.errors import NotDue, RuleBroken, StepOver, Unknown
 from fieldapp.domain.facts import (
+    BottleVoided,
     DeviationStated,
     EntryWithdrawn,
     Fact,
@@ -37,7 +37,7 @@ from fieldapp.domain.facts import (
     VisitSigned,
 )
 from fieldapp.domain.protocols.steps import CONSENT
-from fieldapp.domain.recorded import Reading
+from fieldapp.domain.recorded import Reading, Recorded
 from fieldapp.domain.timetext import format_utc
 
 SENTENCES = {
@@ -121,9 +121,10 @@ def leave_visit(
     """Leave in one press; the reason may follow (R38)."""
     check_past(when, reading)
     told = standing_of(pages, visit, reading)
-    if told.state != "open":
-        refuse(pages, visit, told, VisitLeft)
     one_of(why, LEAVE_WHYS)
+    follows = told.state == "left" and reason.strip()
+    if told.state != "open" and not follows:
+        refuse(pages, visit, told, VisitLeft)
     return [VisitLeft(visit=visit, why=why, reason=reason, **when.fields())]
 
 
@@ -245,13 +246,20 @@ def take_back(
     is_latest = bool(acts) and acts[-1].act == entry.act
     if not is_latest and reading.at - entry.at > TAKE_BACK_WITHIN:
         raise TakenBackLate()
-    return [EntryWithdrawn(of=one.hash, reason=reason) for one in acts if one.act == entry.act]
+    pressed = [one for one in acts if one.act == entry.act]
+    pressed += _voided_with(pages, visit, entry.act)
+    return [EntryWithdrawn(of=one.hash, reason=reason) for one in pressed]
 
 
-def latest_left(pages: Asked, visit: str) -> VisitLeft | None:
-    """Return the latest leaving of a visit, for the page that says why it waits."""
-    found = latest(pages.recorded(visit), VisitLeft)
-    return found.fact if found and isinstance(found.fact, VisitLeft) else None
+def _voided_with(pages: Asked, visit: str, act: str) -> list[Recorded]:
+    """Return what the same press said of bottles alone: an exchange voids the one before."""
+    told = [
+        one
+        for row in pages.bottles(visit=visit)
+        if row["voided"]
+        for one in pages.story(f"bottle:{row['bottle']}")
+    ]
+    return [one for one in told if one.act == act and isinstance(one.fact, BottleVoided)]
 
 
 def _closed(visit: str, outcome: str, when: When) -> VisitClosed:
