@@ -51,6 +51,8 @@ REALM = Realm("tapwitness")
 MOST_BYTES = {"protocol.kept": 24 * 1024, "log.carried": 32 * 1024}
 BALLAST = "ballast"
 BALLAST_BYTES = 8 * 1024 * 1024
+APPLICATION_ID = int.from_bytes(b"TapW")
+"""Written into the database's header, so that a stray file can be told (sync.md B4)."""
 CHECKED_AT_START = 1000
 """Entries of the own log verified at each start (sync.md B4)."""
 
@@ -182,6 +184,7 @@ class Store:
             for statement in filter(str.strip, _LOCAL_TABLES.split(";")):
                 db.execute(statement)
             ledger.make_tables(db)
+            db.execute(f"PRAGMA application_id = {APPLICATION_ID}")
             stale = self.get("page_tables") != str(projections.VERSION)
             if stale:
                 self._rebuild(db)
@@ -615,6 +618,12 @@ class Store:
         """Return how many own entries central has not acknowledged."""
         with self.reader() as db:
             return sum(self._waiting(db, log) for log in self.own_logs(db))
+
+    def acknowledged_at(self) -> str | None:
+        """Return when central signed that it holds the current log, by central's clock."""
+        with self.reader() as db:
+            known = ledger.acknowledged(db, self.current_log(db))
+        return known.at if known else None
 
     def _waiting(self, db: sqlite3.Connection, log: str) -> int:
         head, known = ledger.head(db, log), ledger.acknowledged(db, log)

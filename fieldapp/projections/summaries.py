@@ -22,7 +22,7 @@ from fieldapp.domain.facts import (
     SiteListed,
     VisitPlanned,
 )
-from fieldapp.domain.protocols import Protocol, read_protocol
+from fieldapp.domain.protocols import BadProtocol, Protocol, read_protocol
 from fieldapp.domain.protocols.standing import Standing
 from fieldapp.domain.protocols.where import where
 from fieldapp.domain.recorded import Reading, Recorded
@@ -200,12 +200,19 @@ def stand_of_visit(
 
 
 def protocol_of(db: sqlite3.Connection, sha256: str) -> Protocol | None:
-    """Return the protocol under that hash of its text; texts never change, so one parse serves."""
+    """Return the protocol under that hash of its text; texts never change, so one parse serves.
+
+    Nothing where the text is not here, or is of a newer program than this one: the visit is kept
+    and shown as planned, and no transfer stops on it.
+    """
     if sha256 not in _protocols:
         row = db.execute("SELECT toml FROM p_protocol WHERE sha256 = ?", (sha256,)).fetchone()
         if row is None:
             return None
-        _protocols[sha256] = read_protocol(row[0])
+        try:
+            _protocols[sha256] = read_protocol(row[0])
+        except BadProtocol:
+            return None
     return _protocols[sha256]
 
 

@@ -100,6 +100,8 @@ class Process:
             self._process.kill()
             self._process.wait(15)
         self._reader.join(5)
+        if self._process.stdout is not None:
+            self._process.stdout.close()
 
     def __enter__(self) -> "Process":
         return self

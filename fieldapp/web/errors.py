@@ -14,6 +14,7 @@ from fieldapp.web import shown
 from fieldapp.web.context import BadForm, NoPerson, give_back, reading
 
 UNPROCESSABLE = 422
+INSTANTS = ("at", "until", "since", "first", "second")
 
 
 def register(app: Flask) -> None:
@@ -115,4 +116,4 @@ def _status(fault: RuleBroken) -> int:
 
 
 def _is_instant(name: str, value: object) -> bool:
-    return bool(value) and (name.endswith("at") or name in ("until", "since", "first", "second"))
+    return bool(value) and (name in INSTANTS or name.endswith("_at"))

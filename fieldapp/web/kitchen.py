@@ -41,10 +41,10 @@ def index() -> Answer:
     if not person():
         return redirect(url_for("people.first", then=url_for(".index")), code=303)
     mine = [row for row in pages().routes() if row["sampler"] == person()]
-    now = [row for row in mine if row["day"] == shown_as.today(str(row["zone"] or "UTC"))]
-    if len(now) == 1:
-        return _board(now[0], [row for row in mine if row not in now])
-    return render_template("kitchen/days.html", routes=mine, now=now)
+    todays = [row for row in mine if row["day"] == shown_as.today(str(row["zone"] or "UTC"))]
+    if len(todays) == 1:
+        return _board(todays[0], [row for row in mine if row not in todays])
+    return render_template("kitchen/days.html", routes=mine, todays=todays)
 
 
 @bp.get("/routes/<route>")

@@ -28,8 +28,8 @@ def line() -> list[dict[str, str]]:
     last = json.loads(contact)["at"] if contact else ""
     if waiting:
         said.append(_waiting(waiting, last))
-    elif last:
-        at = shown.clock(last, zone(), reading().at)
+    elif (known := node.acknowledged_at()) is not None:
+        at = shown.clock(known, zone(), reading().at)
         says = words.gettext("Received by central {at}").format(at=at)
         said.append({"says": says, "tone": "good"})
     return said
