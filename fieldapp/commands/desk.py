@@ -1,7 +1,7 @@
 """What the coordinator may do at the Desk: decide on held bottles, settle findings, void codes."""
 
 from fieldapp.commands.bench import ReasonMissing
-from fieldapp.domain.codes import normalise
+from fieldapp.domain.codes import grouped, normalise
 from fieldapp.domain.errors import RuleBroken, StepOver, Unknown
 from fieldapp.domain.facts import AnalysisDecided, BottleVoided, Fact, FindingSettled
 from fieldapp.domain.recorded import Reading
@@ -19,7 +19,7 @@ SENTENCES: dict[str, str] = {
         "Bottle {bottle} is not held at the Bench. Only a held bottle waits for this decision."
     ),
     "not-yet-a-finding": (
-        "That is still on its way until {opens}. It becomes a finding then if nothing arrives."
+        "That is still on its way until {until}. It becomes a finding then if nothing arrives."
     ),
     "bottle-in-use": (
         "Bottle {bottle} was filled or received, so its code cannot be voided. "
@@ -41,7 +41,7 @@ class NotHeld(RuleBroken):
 
 
 class NotYetAFinding(RuleBroken):
-    """An absence that cannot be known before ``opens`` is not there to be settled (R7)."""
+    """An absence that cannot be known before ``until`` is not there to be settled (R7)."""
 
     kind = "not-yet-a-finding"
 
@@ -65,9 +65,9 @@ def decide_analysis(
     """
     row = _bottle(pages, bottle)
     if row["results"]:
-        raise ResultStands(bottle=row["bottle"])
+        raise ResultStands(bottle=grouped(row["bottle"]))
     if row["outcome"] != "held":
-        raise NotHeld(bottle=row["bottle"])
+        raise NotHeld(bottle=grouped(row["bottle"]))
     if not reason.strip():
         raise ReasonMissing(bottle=row["bottle"])
     if row["decided"] == ("analyse" if analyse else "leave"):
@@ -88,7 +88,7 @@ def settle_finding(pages: Pages, reading: Reading, *, finding: str, reason: str)
     if row is None:
         raise Unknown(what="finding", name=finding)
     if row["opens_at"] > text(reading.at):
-        raise NotYetAFinding(opens=row["opens_at"])
+        raise NotYetAFinding(until=row["opens_at"])
     if row["settled"]:
         raise StepOver(at=_latest(pages, f"finding:{finding}", "finding.settled"))
     if not reason.strip():
@@ -114,7 +114,7 @@ def void_bottle(pages: Pages, reading: Reading, *, bottle: str, why: str) -> lis
     if row["voided"]:
         raise StepOver(at=_latest(pages, f"bottle:{row['bottle']}", "bottle.voided"))
     if row["filled"] or row["received_at"]:
-        raise BottleInUse(bottle=row["bottle"])
+        raise BottleInUse(bottle=grouped(row["bottle"]))
     return [BottleVoided(bottle=row["bottle"], why=why)]
 
 
