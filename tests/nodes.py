@@ -21,6 +21,7 @@ from fieldapp.domain.facts import (
 from fieldapp.domain.protocols.standing import Due
 from fieldapp.domain.recorded import Reading, Recorded
 from fieldapp.places import shipped
+from fieldapp.projections.tables import TABLES
 from fieldapp.store import Answer, Store
 from fieldapp.work.devices import take_invite
 from sync import exchange, ledger
@@ -98,6 +99,20 @@ def last_entry(db: sqlite3.Connection, log: str) -> Entry:
     head = ledger.head(db, log)
     assert head is not None
     return ledger.read(db, log, head.seq, 1)[0]
+
+
+def page_tables(store: Store) -> dict[str, list[tuple[Any, ...]]]:
+    """Return the rows of all page tables of a store, in no order."""
+    with store.reader() as db:
+        return tables_in(db)
+
+
+def tables_in(db: sqlite3.Connection) -> dict[str, list[tuple[Any, ...]]]:
+    """Return the rows of all page tables, in no order."""
+    return {
+        table: sorted(db.execute(f"SELECT {', '.join(columns)} FROM {table}"), key=repr)
+        for table, (columns, _) in TABLES.items()
+    }
 
 
 def count(store: Store) -> int:

@@ -9,7 +9,7 @@ from hypothesis import strategies as st
 from fieldapp import projections
 from fieldapp.domain import facts
 from fieldapp.projections import summaries
-from fieldapp.projections.tables import TABLES, make_tables
+from fieldapp.projections.tables import make_tables
 from sync.entry import Entry
 from tests import nodes
 from tests.nodes import SAMPLER, latest, press
@@ -21,14 +21,6 @@ def entries_of(store) -> list[Entry]:
         return list(store._all_entries(db))
 
 
-def dump(db: sqlite3.Connection) -> dict[str, list[tuple[object, ...]]]:
-    """Return the rows of all page tables, in no order."""
-    return {
-        table: sorted(db.execute(f"SELECT {', '.join(columns)} FROM {table}"), key=repr)
-        for table, (columns, _) in TABLES.items()
-    }
-
-
 def tables_after(batches: list[list[Entry]]) -> dict[str, list[tuple[object, ...]]]:
     """Return the page tables of a node that those batches reached, one after the other."""
     summaries._protocols.clear()  # a node that was started now has read no document yet
@@ -36,7 +28,7 @@ def tables_after(batches: list[list[Entry]]) -> dict[str, list[tuple[object, ...
     make_tables(db)
     for batch in batches:
         projections.follow(db, batch)
-    found = dump(db)
+    found = nodes.tables_in(db)
     db.close()
     return found
 
@@ -46,8 +38,7 @@ def day(tmp_path_factory):
     """Give all entries of the worked day as central holds them, and central's own page tables."""
     pair = nodes.make_pair(tmp_path_factory.mktemp("day"))
     nodes.work_a_day(pair)
-    with pair.central.reader() as db:
-        tables = dump(db)
+    tables = nodes.page_tables(pair.central)
     entries = entries_of(pair.central)
     pair.close()
     return entries, tables
@@ -124,7 +115,7 @@ def test_an_answer_may_come_before_the_entry_it_answers(day, answer):
 
 def test_a_due_time_that_comes_after_the_filling_still_counts(planned, clock):
     # The round says 48 hours; without it the rule of the house would.
-    opened = [e for e in entries_of(planned) if e.fields()["kind"] == "round.opened"][0]
+    opened = next(e for e in entries_of(planned) if e.fields()["kind"] == "round.opened")
     changed = {**opened.fields()["data"], "due": "PT5H"}
     code = nodes.issue(planned)[0]
     press(planned, facts.BottleFilled(visit="V-0401", bottle=code, draw=1, fill="line"))
@@ -139,14 +130,12 @@ def test_a_store_rebuilds_what_it_followed(planned):
     press(planned, facts.BottleFilled(visit="V-0401", bottle=code, draw=1, fill="line"))
     taken = latest(planned, f"bottle:{code}", "bottle.filled")
     press(planned, facts.EntryWithdrawn(of=taken.hash, reason="wrong tap"), by=SAMPLER)
-    with planned.reader() as db:
-        before = dump(db)
+    before = nodes.page_tables(planned)
     with planned.transaction() as db:
         db.execute("UPDATE p_bottle SET filled = 7, site = 'nowhere'")
         db.execute("DELETE FROM p_fact")
     assert planned.rebuild() == nodes.count(planned)
-    with planned.reader() as db:
-        assert dump(db) == before
+    assert nodes.page_tables(planned) == before
 
 
 def test_a_withdrawn_filling_leaves_the_bottle_empty_and_the_entry_readable(planned):
