@@ -263,6 +263,7 @@ class _Answer:
 
     def read_scopes(self) -> None:
         """Send what the granted scopes hold past the device's cursors, ``all`` first."""
+        own = self.replica.hooks.own_logs(self.db)
         granted = self.replica.hooks.grants(self.db, self.dev)
         private = self.replica.hooks.sees_private(self.db, self.dev)
         for scope in sorted(self.asked.have, key=lambda scope: (scope != "all", scope)):
@@ -273,7 +274,7 @@ class _Answer:
             if self.entries_left < 1 or self.bytes_left < 1:
                 self.more = True
                 continue
-            found = ledger.scoped(self.db, scope, after, self.entries_left + 1)
+            found = ledger.scoped(self.db, scope, after, self.entries_left + 1, first=own)
             sent = self._fitting(found)
             self.more = self.more or len(sent) < len(found)
             self._spend(sent)

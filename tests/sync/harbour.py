@@ -4,6 +4,7 @@ Its facts are notes. Its page tables are ``page`` (one row a fact, whoever carri
 ``followed``, which breaks if replication ever hands over the same entry twice.
 """
 
+import hashlib
 import itertools
 import sqlite3
 import threading
@@ -17,7 +18,7 @@ from sync import ledger
 from sync.adopt import carried
 from sync.encoding import b64, unb64
 from sync.endpoint import Endpoint
-from sync.entry import CARRIED, MOST_READ, MOST_WRITTEN, Entry, Realm, compose, conceal, new_log_id
+from sync.entry import CARRIED, MOST_READ, MOST_WRITTEN, Entry, Realm, compose, conceal
 from sync.errors import BadEntry, Refused
 from sync.exchange import SyncReport, run
 from sync.folder import write_anchor
@@ -51,6 +52,7 @@ class Node:
         self.codes: set[str] = set()
         self.blind: set[str] = set()
         self.clock = itertools.count()
+        self.ids = itertools.count()  # shared by clones and kept over a restore, as chance is
         self.lock = threading.RLock()
         self.db = self._connect()
         with self.transaction() as db:
@@ -140,7 +142,7 @@ class Node:
         return self._append(db, log, kind, data, refs=refs, scope=scope, private=private)
 
     def open_log(self, db: sqlite3.Connection, why: str) -> str:
-        log = new_log_id()
+        log = b64(hashlib.sha256(f"{self.dev} {next(self.ids)}".encode()).digest()[:16])
         db.execute("INSERT INTO own (log) VALUES (?)", (log,))
         self._append(db, log, "log.opened", {"public_key": b64(self.key.public), "why": why})
         return log
@@ -162,7 +164,9 @@ class Node:
 
     def note(self, text: str, *scope: str, private: Mapping[str, Any] | None = None) -> bytes:
         """Save one fact and return its hash."""
-        hidden = None if private is None else conceal(private)[0]
+        # Nothing here is left to chance, so that a history that fails can be told again.
+        salt = hashlib.sha256(text.encode()).digest()[:16]
+        hidden = None if private is None else conceal(private, salt)[0]
         with self.transaction() as db:
             return self.write(db, "note.made", {"text": text}, scope=scope, private=hidden).hash
 
