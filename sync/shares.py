@@ -91,13 +91,21 @@ def drop_scope(db: sqlite3.Connection, scope: str) -> None:
     db.execute("DELETE FROM borrowed WHERE hash NOT IN (SELECT hash FROM entry_scope)")
 
 
-def scoped(db: sqlite3.Connection, scope: str, after: Mapping[str, Head], most: int) -> list[Entry]:
+def scoped(
+    db: sqlite3.Connection,
+    scope: str,
+    after: Mapping[str, Head],
+    most: int,
+    *,
+    first: Sequence[str] = (),
+) -> list[Entry]:
     """Return what one scope holds past the cursors, by (log, seq), at most so many.
 
-    A log without a cursor starts at its beginning.
+    A log without a cursor starts at its beginning. The logs named ``first`` come before the
+    others: with them come the keys that the others are verified with.
     """
     found: list[Entry] = []
-    for log in _logs_of_scope(db, scope):
+    for log in dict.fromkeys((*first, *_logs_of_scope(db, scope))):
         start = after[log].seq if log in after else 0
         rows = db.execute(
             "SELECT hash FROM entry_scope WHERE scope = ? AND log = ? AND seq > ? "
