@@ -99,8 +99,9 @@ def receive(
     """Receive one bottle; hold it where its record or the clerk's eye finds something.
 
     ``outcome`` is the clerk's word; ``accepted`` becomes ``held`` where a deviation stands or a
-    ``check`` failed (R8). The same bottle again under the same outcome changes nothing (R14);
-    ``counted`` says that its number was only counted up, so it is no second sticker.
+    ``check`` failed (R8). The same bottle again changes nothing (R14), and a plain second scan
+    lifts no hold and no refusal; ``counted`` says that its number was only counted up, so it is
+    no second sticker.
 
     Raises:
         BadCode: What was scanned is no code of ours.
@@ -109,7 +110,7 @@ def receive(
     """
     code = normalise(bottle)
     row = pages.bottle(code)
-    settled = _outcome(pages, row, outcome, reason, check)
+    settled = _standing(row, outcome, check) or _outcome(pages, row, outcome, reason, check)
     if row and _in_already(row, settled, laboratory_number, counted):
         return Decision((), {"bottle": code, "again": True, "outcome": row["outcome"]})
     laboratory = _laboratory(pages, row)
@@ -184,6 +185,12 @@ def take_back(pages: Pages, reading: Reading, entry: str, *, latest: str) -> lis
     if entry != latest and reading.since(found.at) > TAKE_BACK_WITHIN:
         raise TooLateToTakeBack(bottle=found.fact.bottle)
     return [EntryWithdrawn(of=entry, reason="taken back at the counter")]
+
+
+def _standing(row: Row | None, outcome: str, check: str) -> str:
+    """Return the outcome that a plain scan finds standing, empty where the clerk says something."""
+    plain = outcome == "accepted" and not check
+    return str(row["outcome"]) if row and row["received_at"] and plain else ""
 
 
 def _outcome(pages: Pages, row: Row | None, outcome: str, reason: str, check: str) -> str:

@@ -74,6 +74,18 @@ def test_a_second_sticker_on_one_bottle_is_kept_and_becomes_a_finding(node):
     assert "received-twice" in findings(node)
 
 
+@pytest.mark.parametrize(
+    ("outcome", "again"), [("held", "hold/held"), ("refused", "stop/refused-again")]
+)
+def test_a_trigger_that_fires_twice_lifts_no_hold_and_no_refusal(node, outcome, again):
+    node.fill("Q-0401")
+    code = node.codes["Q-0401"]
+    receive(node, code, outcome=outcome, reason="it leaks")
+    assert receive(node, code) == again
+    assert receipts(node, code) == 1
+    assert node.bottle("Q-0401")["outcome"] == outcome
+
+
 def test_a_leak_seen_after_the_first_scan_is_recorded_beside_it(node):
     node.fill("Q-0401")
     code = node.codes["Q-0401"]
