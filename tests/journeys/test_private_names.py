@@ -17,9 +17,7 @@ from types import SimpleNamespace
 import pypdfium2 as pdfium
 import pytest
 import zxingcpp
-from click.testing import CliRunner, Result
 
-from fieldapp.cli import main
 from fieldapp.clock import SCRIPT
 from fieldapp.domain.codes import normalise
 from fieldapp.rehearsal.nodes import Process
@@ -140,7 +138,7 @@ def test_neither_output_of_the_rehearsal_holds_private_text(kept: Kept) -> None:
 def test_labels_and_their_qr_codes_hold_no_private_text(kept: Kept, tmp_path: Path) -> None:
     central = copied(kept, "central", tmp_path)
     target = tmp_path / "labels.pdf"
-    printed = command("labels", nodes.ROUTE, "-o", str(target), "--data", str(central))
+    printed = walks.command("labels", nodes.ROUTE, "-o", str(target), "--data", str(central))
     assert printed.exit_code == 0, printed.stderr
     pdf = target.read_bytes()
     assert found_in(pdf) == []
@@ -163,12 +161,12 @@ def test_no_command_prints_private_text(tmp_path: Path) -> None:
     data = ["--data", str(tmp_path / "desk")]
     plan = walks.shipped_plan()
     said = [
-        command("round", "import", str(nodes.SHIPPED), *data, "--json"),
-        command("round", "import", str(_moved(tmp_path, plan)), *data),
-        command("round", "import", str(_moved(tmp_path, plan)), *data, "--amend", "--json"),
-        command("labels", nodes.ROUTE, "-o", str(tmp_path / "l.pdf"), *data, "--json"),
-        command("central", "--invite", "sampler-1", *data, "--json"),
-        command("verify", *data, "--json"),
+        walks.command("round", "import", str(nodes.SHIPPED), *data, "--json"),
+        walks.command("round", "import", str(_moved(tmp_path, plan)), *data),
+        walks.command("round", "import", str(_moved(tmp_path, plan)), *data, "--amend", "--json"),
+        walks.command("labels", nodes.ROUTE, "-o", str(tmp_path / "l.pdf"), *data, "--json"),
+        walks.command("central", "--invite", "sampler-1", *data, "--json"),
+        walks.command("verify", *data, "--json"),
     ]
     assert [one.exit_code for one in said] == [0, 1, 0, 0, 0, 0]
     assert "site:Q-0412 (address)" in said[1].stderr, "that it differs is said, the text is not"
@@ -185,7 +183,7 @@ def test_faults_of_private_texts_name_the_place_and_never_the_text(tmp_path: Pat
     plan["people"][0]["name"] = {"first": "Wrenna Oddquist"}
     plan["sites"][6]["telephone"] = "+1 208 555 0147"
     data = ["--data", str(tmp_path / "desk"), "--json"]
-    said = command("round", "import", str(walks.written(tmp_path, plan)), *data)
+    said = walks.command("round", "import", str(walks.written(tmp_path, plan)), *data)
     assert said.exit_code == 1
     assert said.stdout == ""
     assert len(said.stderr.splitlines()) == 7
@@ -218,12 +216,14 @@ def test_a_device_of_the_bench_alone_fetches_the_bottles_and_no_private_byte(
     with Process("central", central) as running:
         url = running.url
         assert found_in((central / "running.json").read_bytes()) == []
-        invited = command("central", "--invite", nodes.CLERK, "--data", str(central), "--json")
+        invited = walks.command(
+            "central", "--invite", nodes.CLERK, "--data", str(central), "--json"
+        )
         code = json.loads(invited.stdout)["code"]
         said = [
             invited,
-            command("enrol", url, code, "--data", str(counter)),
-            command("sync", "--data", str(counter), "--json"),
+            walks.command("enrol", url, code, "--data", str(counter)),
+            walks.command("sync", "--data", str(counter), "--json"),
         ]
     assert [one.exit_code for one in said] == [0, 0, 0], said[-1].stderr
     assert found_in("".join(one.stdout + one.stderr for one in said)) == []
@@ -294,13 +294,6 @@ def crawl(reader: Reader, begin: Iterable[str]) -> dict[str, str]:
 
 
 # what the tests stand on
-
-
-def command(*words: str) -> Result:
-    """Run a command here, in this process."""
-    done = CliRunner().invoke(main, words)
-    assert done.exception is None or isinstance(done.exception, SystemExit), done.exception
-    return done
 
 
 def copied(kept: Kept, name: str, folder: Path) -> Path:

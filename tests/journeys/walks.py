@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from click.testing import CliRunner
+from click.testing import CliRunner, Result
 
 from fieldapp.cli import main
 from tests.nodes import SHIPPED
@@ -67,10 +67,16 @@ def bare(home: Path, spare: Path) -> dict[str, str]:
     return {**kept, **dict.fromkeys(homes, str(home)), **dict.fromkeys(temporary, str(spare))}
 
 
+def command(*words: str) -> Result:
+    """Run a command in this process."""
+    done = CliRunner().invoke(main, words)
+    assert done.exception is None or isinstance(done.exception, SystemExit), done.exception
+    return done
+
+
 def rehearse(file: Path, *more: str) -> Walked:
     """Rehearse a route file; its nodes are processes, the walker is this one."""
-    done = CliRunner().invoke(main, ["rehearse", str(file), "--json", *more])
-    assert done.exception is None or isinstance(done.exception, SystemExit), done.exception
+    done = command("rehearse", str(file), "--json", *more)
     return Walked(done.exit_code, done.stdout, done.stderr)
 
 
