@@ -265,5 +265,8 @@ SENTENCES: dict[str, str] = {
     "not-utf-8": N_("The file is not UTF-8; it was read as Windows-1252. Check its signs."),
     "column-left-out": N_("The column {value} means nothing here and was left out."),
     "column-absent": N_("The file has no column {value}; it stays empty."),
+    "number-unheard": N_(
+        "No receipt under the number {value} has come here; the row was read by its bottle code."
+    ),
     "row-again": N_("Row {first} says the same; this one was left out."),
 }

@@ -270,7 +270,10 @@ class _Rows:
         typed, number = read_plain(cells, "bottle"), read_plain(cells, "laboratory_number")
         code = self._code(cells, typed) if typed else ""
         by_number = self.resolve("", number) if number else None
-        if number and by_number is None:
+        if number and by_number is None and code:
+            # the code says which bottle it is; the receipt may not have reached this node (R7)
+            cells.note("number-unheard", value=number)
+        elif number and by_number is None:
             cells.fault("unknown-number", "laboratory_number", number)
         elif code and by_number and by_number != code:
             cells.fault("disagree", "laboratory_number", number, right=by_number, bottle=code)

@@ -120,12 +120,21 @@ def test_moments_are_iso_and_never_guessed(written, kept):
     assert read(row(analysed_at=written)).rows[0].analysed_at == kept
 
 
+def test_a_number_never_heard_of_is_a_note_where_the_code_says_which_bottle():
+    found = read(row(laboratory_number="W-9"))
+    (one,) = found.rows
+    assert (one.bottle, one.laboratory_number) == (ONE, "W-9")
+    (note,) = found.notes
+    assert (note.kind, note.row) == ("number-unheard", 2)
+    assert "W-9" in note.line
+
+
 WRONG = [
     ({"bottle": "F8QY40YGEC8"}, "bottle", "code-check"),
     ({"bottle": "F8QY"}, "bottle", "code-length"),
     ({"bottle": "F8QY40YGEU9"}, "bottle", "code-character"),
     ({"bottle": STRANGE}, "bottle", "unknown-bottle"),
-    ({"laboratory_number": "W-9"}, "laboratory_number", "unknown-number"),
+    ({"bottle": "", "laboratory_number": "W-9"}, "laboratory_number", "unknown-number"),
     ({"laboratory_number": "W-2"}, "laboratory_number", "disagree"),
     ({"bottle": "", "laboratory_number": ""}, "bottle", "no-bottle"),
     ({"bottle": "=A1"}, "bottle", "formula"),
