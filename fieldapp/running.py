@@ -79,23 +79,20 @@ def serve(
     app = create_app(store, token=token)
     if door:
         open_door(app, store)
-    bound = _bind(port or int(store.get("port") or 0), asked=bool(port))
-    server = create_server(app, sockets=[bound], threads=THREADS, ident="")
-    running = Running(bound.getsockname()[1], token)
-    with store.transaction():
-        store.put("port", str(running.port))
-    outer = _open_listen(store, listen, certificate, key) if listen else None
-    identity.write_private(
-        store.folder / RUNNING, {"port": running.port, "token": token, "pid": os.getpid()}
-    )
-    try:
+    with contextlib.ExitStack() as opened:
+        if listen:
+            opened.callback(_open_listen(store, listen, certificate, key))
+        bound = _bind(port or int(store.get("port") or 0), asked=bool(port))
+        server = create_server(app, sockets=[bound], threads=THREADS, ident="")
+        opened.callback(server.close)
+        running = Running(bound.getsockname()[1], token)
+        with store.transaction():
+            store.put("port", str(running.port))
+        said = {"port": running.port, "token": token, "pid": os.getpid()}
+        identity.write_private(store.folder / RUNNING, said)
+        opened.callback((store.folder / RUNNING).unlink, missing_ok=True)
         ready(running)
         server.run()
-    finally:
-        (store.folder / RUNNING).unlink(missing_ok=True)
-        if outer is not None:
-            outer()
-        server.close()
 
 
 def _bind(port: int, *, asked: bool) -> socket.socket:
@@ -138,12 +135,18 @@ def _open_listen(store: Store, listen: str, certificate: str, key: str) -> Calla
         ) from fault
     server = Server((host, int(port)), create_door(store), numthreads=THREADS)
     if certificate and key:
-        server.ssl_adapter = BuiltinSSLAdapter(certificate, key)
+        try:
+            server.ssl_adapter = BuiltinSSLAdapter(certificate, key)
+        except OSError as fault:  # an SSLError is one too
+            raise Unsuitable(
+                f"{certificate} and {key} are no certificate with its key: "
+                f"{fault.strerror or fault}. Give two PEM files that belong together."
+            ) from fault
     try:
         server.prepare()
     except OSError as fault:
         raise Unsuitable(
-            f"{listen} cannot be listened on: {fault.strerror}. Name another."
+            f"{listen} cannot be listened on: {fault.strerror or fault}. Name another."
         ) from fault
     threading.Thread(target=server.serve, daemon=True).start()
     return server.stop  # type: ignore[no-any-return]
