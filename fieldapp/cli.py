@@ -192,25 +192,33 @@ def round_import(file: Path, folder: Path, amend: bool, as_json: bool) -> None:
     Example: tapwitness round import spring.json --data central
     """
     answer = _import_round(folder, file, amend)
-    for line in [*answer["notes"], *answer["changes"]]:
-        click.echo(line, err=True)
     if as_json:
         click.echo(json.dumps(answer, ensure_ascii=False))
     elif not answer["known"] or answer["facts"]:
         click.echo(f"Round {answer['round']}: {answer['facts']} entries recorded.")
     elif not answer["changes"]:
         click.echo(f"Round {answer['round']} is known and the file changes nothing.")
-    if answer["changes"] and not answer["amended"]:
-        click.echo(
-            f"The round {answer['round']} is known and this file differs. "
-            "Nothing was recorded: look at the lines above, then add --amend.",
-            err=True,
-        )
-        sys.exit(NO)
+    _stop_at_differences(answer)
 
 
 def _import_round(folder: Path, file: Path, amend: bool) -> dict[str, Any]:
-    return _handed(folder, "round-import", {"file": file.name, "data": _raw(file), "amend": amend})
+    """Import a round file and say what is worth knowing of it."""
+    asked = {"file": file.name, "data": _raw(file), "amend": amend}
+    answer = _handed(folder, "round-import", asked)
+    for line in [*answer["notes"], *answer["changes"]]:
+        click.echo(line, err=True)
+    return answer
+
+
+def _stop_at_differences(answer: dict[str, Any]) -> None:
+    """End with exit 1 where a file of a known round differs and nobody said --amend."""
+    if answer["changes"] and not answer["amended"]:
+        click.echo(
+            f"The round {answer['round']} is known and this file differs. Nothing was recorded: "
+            "look at the lines above, then import it with --amend.",
+            err=True,
+        )
+        sys.exit(NO)
 
 
 @main.group()
@@ -290,7 +298,7 @@ def _routes_of(folder: Path, route: str) -> list[str]:
     from fieldapp.reading.rounds import read_round
 
     found = read_round(file.read_bytes(), file.name)
-    _import_round(folder, file, False)
+    _stop_at_differences(_import_round(folder, file, False))
     return [planned.route for planned in found.routes]
 
 
