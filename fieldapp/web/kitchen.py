@@ -90,9 +90,12 @@ def last_use(visit: str) -> Answer:
         return _page("last-use", found, again="yes", says="", sent={}, **choices)
     try:
         form = forms.LastUseForm(unknown=EXCLUDE).load(request.args.to_dict())
+        told = _read_back(form, found["zone"])
     except ValidationError:
         return redirect(url_for(".visit", visit=visit), code=303)
-    return _page("read-back", found, sent=form, **_read_back(form, found["zone"]))
+    except RuleBroken as fault:
+        return pressed.refused(visit, fault)
+    return _page("read-back", found, sent=form, **told)
 
 
 # what is pressed
@@ -291,6 +294,7 @@ def _read_back(form: dict[str, Any], zone: str) -> dict[str, Any]:
     """Return how long ago a statement puts the last use; the shortest counts."""
     at, to = (forms.moment_of(form, name, zone) for name in ("at", "to"))
     limits = statement.bounds(form["exact"], at, to, reading())
-    assert limits is not None
+    if limits is None:
+        raise statement.NothingSaid()
     now: datetime = reading().at
     return {"at": at, "to": to, "shortest": now - limits[1], "longest": now - limits[0]}

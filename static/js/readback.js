@@ -13,7 +13,10 @@ export function startReadback(root = document) {
   const show = () => {
     const text = spoken(form)
     place.hidden = !text
-    place.textContent = text
+    if (text) {
+      place.querySelector("b").textContent = text.shortest
+      place.querySelector("span").textContent = text.says
+    }
     // only what was read back on this page may be recorded without another page
     said.value = text ? "yes" : ""
     root.querySelectorAll("[data-says-read]").forEach(button => {
@@ -24,23 +27,20 @@ export function startReadback(root = document) {
   show()
 }
 
-// "About 01:00, bath. 5 h 10 to 5 h 40 ago: the shortest counts." The words come from the page.
+// { shortest: "5 h 10", says: "at the shortest: “About 01:00, bath.”" }, nothing while nothing is
+// chosen or a time is typed. The words come from the page.
 export function spoken(form, now = nodeTime) {
   const exact = chosen(form, "exact")
   const at = chosen(form, "at")
   const typed = [...form.querySelectorAll("input[type='datetime-local']")].some(field => field.value)
-  if (!exact || typed || (exact.value !== "at" && exact.value !== "about") || !at) return ""
-  const where = chosen(form, "where")
-  const instant = Date.parse(at.value)
+  if (!exact || typed || (exact.value !== "at" && exact.value !== "about") || !at) return null
   const give = exact.value === "about" ? Number(form.dataset.about) * MINUTE_MS : 0
-  const shortest = Math.max(0, now() - (instant + give))
-  const longest = Math.max(0, now() - (instant - give))
-  return form.dataset.sentence
+  const shortest = Math.max(0, now() - (Date.parse(at.value) + give))
+  const says = form.dataset.sentence
     .replace("{exact}", exact.dataset.says)
     .replace("{when}", at.dataset.says)
-    .replace("{where}", where?.dataset.says ?? "")
-    .replace("{shortest}", hours(shortest))
-    .replace("{ago}", give ? `${hours(shortest)} – ${hours(longest)}` : hours(shortest))
+    .replace("{where}", chosen(form, "where")?.dataset.says ?? "")
+  return { shortest: hours(shortest), says }
 }
 
 function chosen(form, name) {
