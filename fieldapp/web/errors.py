@@ -33,7 +33,7 @@ def sentence(fault: RuleBroken) -> str:
         name: shown.clock(value, zone, reading().at) if _is_instant(name, value) else value
         for name, value in fault.values.items()
     }
-    return words.say(words.RULES, fault.kind, values)
+    return words.broken(fault.kind, values)
 
 
 def rule_broken(fault: RuleBroken) -> Response | tuple[str, int]:

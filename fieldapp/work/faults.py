@@ -18,7 +18,7 @@ def said_of(fault: Exception) -> dict[str, Any]:
     if isinstance(fault, BadFile):
         return {"lines": [one.line for one in fault.faults], "known": True}
     if isinstance(fault, RuleBroken):
-        lines = [words.say(words.RULES, fault.kind, fault.values)]
+        lines = [words.broken(fault.kind, fault.values)]
         lines += [str(line) for line in fault.values.get("changes", ())]
         return {"lines": lines, "known": True}
     if isinstance(fault, SyncError | CannotPrint):

@@ -1,0 +1,35 @@
+"""The sentence of each deviation."""
+
+from fieldapp.words.marks import N_
+
+DEVIATIONS: dict[str, str] = {
+    "stand-short": N_("The water stood too short before the draw"),
+    "stand-doubtful": N_("The water may have stood too short before the draw"),
+    "stand-long": N_("The water stood longer than the rule has in mind"),
+    "stand-unknown": N_("Nobody knows how long the water stood"),
+    "tap-used-in-stand": N_("Water was used while it had to stand"),
+    "pre-flush": N_("The tap was flushed just before the stand"),
+    "run-short": N_("The tap did not run as long as the protocol asks"),
+    "aerator-cleaned": N_("The aerator was cleaned before the draw"),
+    "aerator-removed": N_("The aerator was taken off for the draw"),
+    "filter-in-place": N_("A filter was in the way of the water"),
+    "softener-in-place": N_("A softener was in the way of the water"),
+    "hot-water": N_("Hot water was drawn"),
+    "not-drinking-tap": N_("The tap is not one that people drink from"),
+    "plumbing-work": N_("There was work on the plumbing lately"),
+    "low-flow": N_("The tap ran slower than a glass is filled"),
+    "narrow-mouth": N_("The bottle's mouth is too narrow for the flow"),
+    "interrupted-flow": N_("The flow was interrupted between litres"),
+    "fill-below": N_("The bottle was filled below the line"),
+    "fill-over": N_("The bottle was filled over the line"),
+    "fill-spilled": N_("Water was spilled from the bottle"),
+    "litres-shifted": N_("A litre before it was not full, so the later ones moved"),
+    "wrong-order": N_("The litres were drawn out of order"),
+    "wrong-bottle": N_("The bottle was printed for another draw or site"),
+    "filled-twice": N_("The bottle was filled twice"),
+    "poured-instead": N_("A litre that had to be kept was poured away"),
+    "drawn-after-stop": N_("It was drawn although an answer had ended the visit"),
+    "not-asked": N_("A question of the protocol was not asked"),
+    "not-as-expected": N_("An answer was not as the protocol expects"),
+    "other": N_("Something else was not as the protocol says"),
+}
