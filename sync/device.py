@@ -13,47 +13,21 @@ other hash                a fork                      fetches central's history,
 
 import sqlite3
 from collections.abc import Mapping
-from dataclasses import dataclass, field
 from typing import Any
 
 from sync import ledger, wire
 from sync.acknowledgement import Acknowledgement
 from sync.adopt import adopt
-from sync.central import verified_alone
-from sync.encoding import b64
-from sync.entry import Entry
+from sync.compare import View
 from sync.errors import BadEntry, NoContact, Refused
-from sync.follow import ODD_DATA, follow
+from sync.follow import ODD_DATA
 from sync.ledger import Head
+from sync.pull import Run, hold_back, take_pull
 from sync.replica import Replica
+from sync.trust import verified_alone
 
-BEHIND = "behind"
-FORK = "fork"
 MOST_TRIES = 3  # refusals of one log that a run answers by asking again
 FEWEST_ENTRIES = 1
-
-
-@dataclass
-class Run:
-    """What one run has learned; nothing of it outlives the run."""
-
-    most: int = wire.MOST_ENTRIES
-    most_bytes: int = wire.MOST_ENTRY_BYTES
-    at_central: dict[str, Head | None] = field(default_factory=dict)
-    fetch: dict[str, Head | None] = field(default_factory=dict)  # log -> place known to be common
-    returning: dict[str, tuple[int, bytes]] = field(default_factory=dict)
-    returned: set[str] = field(default_factory=set)
-    skip: set[str] = field(default_factory=set)
-    tries: dict[str, int] = field(default_factory=dict)
-    blocked: set[str] = field(default_factory=set)
-    refused: list[dict[str, Any]] = field(default_factory=list)
-    denied: set[str] = field(default_factory=set)
-    regressed: set[str] = field(default_factory=set)
-    pushed: int = 0
-    pulled: int = 0
-    carried: int = 0
-    more: bool = False
-    sent_back: dict[str, list[Entry]] = field(default_factory=dict)
 
 
 def waiting(replica: Replica, db: sqlite3.Connection) -> int:
@@ -115,7 +89,7 @@ def take(replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping
         moved = _take_heads(replica, run, answer, noted)
         moved |= _take_refusals(run, answer)
         moved |= _take_tails(replica, run, answer)
-        moved |= _take_pull(replica, run, request, answer)
+        moved |= take_pull(replica, run, request, answer)
         moved |= _take_regressed(replica, run, answer)
         run.denied |= set(wire.read_list(answer.get("denied"), "denied"))
     except (BadEntry, Refused) as fault:
@@ -202,7 +176,7 @@ def _take_heads(
     said = wire.read_mapping(answer["heads"], "heads")
     with replica.hooks.reading() as db:
         own = [log for log in replica.hooks.own_logs(db) if log in said]
-        views = [_View.of(db, log, said[log], noted.get(log)) for log in own]
+        views = [View.of(db, log, said[log], noted.get(log)) for log in own]
     moved = False
     for view in views:
         moved |= view.log not in run.at_central or run.at_central[view.log] != view.there
@@ -220,52 +194,7 @@ def _take_heads(
     return moved
 
 
-@dataclass(frozen=True, slots=True)
-class _View:
-    """What central says of one own log beside what is held here."""
-
-    log: str
-    there: Head | None
-    same: bool
-    why: str | None  # behind or fork, where this log cannot go on
-    note: Acknowledgement | None  # that proves central holds a place of our history
-    old: Acknowledgement | None
-
-    @classmethod
-    def of(
-        cls, db: sqlite3.Connection, log: str, said: Any, note: Acknowledgement | None
-    ) -> "_View":
-        """Compare by number and hash; a number alone proves nothing."""
-        there, mine = wire.read_head(said), ledger.head(db, log)
-        at = said["at"]
-        same = at == 0 or b64(ledger.hash_at(db, log, at) or b"") == said["at_hash"]
-        longer = there is not None and (mine is None or there.seq > mine.seq)
-        why = FORK if not same else BEHIND if longer else None
-        if note is not None and ledger.hash_at(db, log, note.seq) != note.hash:
-            note = None  # true, but of another history than ours
-        return cls(log, there, same, why, note, ledger.acknowledged(db, log))
-
-    @property
-    def fell(self) -> bool:
-        """Say whether central no longer holds what it once acknowledged."""
-        return self.old is not None and (self.shorter or not self.same)
-
-    @property
-    def shorter(self) -> bool:
-        """Say whether central's log ends before what it acknowledged: it was restored."""
-        reach = self.there.seq if self.there else 0
-        return self.old is not None and reach < self.old.seq
-
-    @property
-    def changes(self) -> bool:
-        """Say whether anything has to be written."""
-        fresh = self.note is not None and (
-            self.old is None or (self.old.seq, self.old.hash) != (self.note.seq, self.note.hash)
-        )
-        return self.fell or fresh or self.why is not None
-
-
-def _settle(replica: Replica, run: Run, db: sqlite3.Connection, view: _View) -> None:
+def _settle(replica: Replica, run: Run, db: sqlite3.Connection, view: View) -> None:
     before = 0 if view.old is None or view.fell else view.old.seq
     if view.fell:
         ledger.drop_acknowledgement(db, view.log)
@@ -309,7 +238,7 @@ def _take_tails(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
                 ]
             outcome = adopt(replica, log, entries)
         except (BadEntry, *ODD_DATA) as fault:
-            _hold_back(run, log, fault)
+            hold_back(run, log, fault)
             continue
         run.carried += outcome.carried
         run.pulled += outcome.fresh
@@ -318,67 +247,6 @@ def _take_tails(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
         )
         run.fetch[log] = outcome.common or run.fetch[log]
     return moved
-
-
-def _take_pull(
-    replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping[str, Any]
-) -> bool:
-    moved = False
-    for value in wire.read_list(answer["pull"], "pull"):
-        scope, log = value["scope"], wire.read_log(value["log"])
-        sent = wire.read_list(value["entries"], "entries")
-        if scope not in request["have"] or log in run.skip:
-            continue  # nothing of the kind was asked for
-        entries: list[Entry] = []
-        with replica.hooks.reading() as db:
-            for one in sent:
-                try:
-                    entries.append(_pulled(replica, db, log, one))
-                    past = wire.read_head(request["have"][scope].get(log) or {"seq": 0})
-                    if past is not None and entries[-1].seq <= past.seq:
-                        raise NoContact("it sends again what this device has")
-                except BadEntry as fault:
-                    _hold_back(run, log, fault)
-                    moved = True
-                    break
-        if entries:
-            moved |= _borrow(replica, run, scope, log, entries)
-    return moved
-
-
-def _pulled(replica: Replica, db: sqlite3.Connection, log: str, value: object) -> Entry:
-    entry = verified_alone(replica, db, wire.unpack(replica.realm, value))
-    if entry.log != log:
-        raise BadEntry("it is of another log than it was sent for")
-    return entry
-
-
-def _borrow(replica: Replica, run: Run, scope: str, log: str, entries: list[Entry]) -> bool:
-    pin = replica.hooks.central()
-    at, frm = replica.hooks.moment().at, pin.dev if pin else ""
-    last = entries[-1]
-    try:
-        with replica.hooks.transaction() as db:
-            fresh = [
-                entry
-                for entry in entries
-                if ledger.borrow(db, entry, scope=scope, at=at, frm=frm, realm=replica.realm)
-            ]
-            follow(replica, db, fresh)
-            ledger.set_cursor(db, scope, log, Head(last.seq, last.hash))
-    except ODD_DATA as fault:
-        _hold_back(run, log, fault)
-        return True
-    run.pulled += len(fresh)
-    return True
-
-
-def _hold_back(run: Run, log: str, fault: Exception) -> None:
-    """Leave one log where it is for this run and say why; the others go on."""
-    why = "unverified" if isinstance(fault, BadEntry) else "failed"
-    run.skip.add(log)
-    run.blocked.add(log)
-    run.refused.append({"log": log, "at": 0, "why": why, "says": str(fault)})
 
 
 def _take_regressed(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:

@@ -13,6 +13,7 @@ from sync.entry import Realm
 from sync.errors import NoContact, Refused
 from sync.keys import DeviceKey, key_id
 from sync.peer import Answer, Peer
+from sync.pull import Run
 from sync.replica import Moment, Pin, Replica
 
 NONCE_BYTES = 16
@@ -55,7 +56,7 @@ def run(
         NoContact: The line or the answer failed; try again later (``sync.retry``).
         Refused: Central does not know this device.
     """
-    state = device.Run()
+    state = Run()
     moved = True
     while moved and not (stop is not None and stop()):
         request, answer = _exchange(replica, to, state)
@@ -141,9 +142,7 @@ def _note_clock(replica: Replica) -> bool:
     return True
 
 
-def _exchange(
-    replica: Replica, to: Peer, state: device.Run
-) -> tuple[dict[str, Any], dict[str, Any]]:
+def _exchange(replica: Replica, to: Peer, state: Run) -> tuple[dict[str, Any], dict[str, Any]]:
     renewals = 0
     while True:
         if not replica.token:
@@ -193,7 +192,7 @@ def _text(body: Mapping[str, Any], name: str) -> str:
     return value
 
 
-def _tell(replica: Replica, state: device.Run, progress: Progress) -> None:
+def _tell(replica: Replica, state: Run, progress: Progress) -> None:
     with replica.hooks.reading() as db:
         left = device.waiting(replica, db)
     done = state.pushed + state.pulled

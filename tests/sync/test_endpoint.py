@@ -16,6 +16,7 @@ from sync.exchange import enrol, open_session, run
 from sync.http import HttpPeer, check_address
 from sync.keys import DeviceKey
 from sync.peer import Answer, LoopbackPeer, unpack
+from sync.pull import Run
 from sync.retry import LONGEST_S, SHORTEST_S, delay
 
 from .harbour import REALM, Harbour, Node
@@ -65,7 +66,7 @@ def send(harbour: Harbour, path: str, body: Mapping[str, Any], token: str = "") 
 
 def test_without_a_session_nothing_is_taken_or_told(harbour, node):
     node.note("fact")
-    request = device.ask(node.replica, device.Run())
+    request = device.ask(node.replica, Run())
     for token in ("", "guess", "é", "x" * 5000):
         answer = send(harbour, EXCHANGE, request, token)
         assert (answer.code, answer.body["title"]) == (401, "no-session")
@@ -207,7 +208,7 @@ def test_a_request_that_no_version_sends_is_malformed_and_nothing_of_it_is_taken
 ):
     open_session(node.replica, harbour.peer())
     node.note("fact")
-    request = {**device.ask(node.replica, device.Run()), "nonce": "n"}
+    request = {**device.ask(node.replica, Run()), "nonce": "n"}
     answer = send(harbour, EXCHANGE, {**request, **change}, node.replica.token)
     assert (answer.code, answer.body["nonce"]) == (400, "n")
     assert harbour.central.texts() == []
@@ -216,7 +217,7 @@ def test_a_request_that_no_version_sends_is_malformed_and_nothing_of_it_is_taken
 @pytest.mark.parametrize("junk", [5, None, [], {}, {"b": 5, "s": "A"}, {"b": "{}", "s": None}])
 def test_junk_among_pushed_entries_is_refused_by_log(harbour, node, junk):
     open_session(node.replica, harbour.peer())
-    request = device.ask(node.replica, device.Run())
+    request = device.ask(node.replica, Run())
     request["push"][0]["entries"][:] = [junk]
     answer = send(harbour, EXCHANGE, request, node.replica.token)
     assert answer.code == 200
@@ -229,7 +230,7 @@ def test_more_entries_than_agreed_are_too_many_and_are_sent_in_smaller_parts(
     for n in range(40):
         node.note(f"fact {n}")
     monkeypatch.setattr("sync.central.wire.MOST_ENTRIES", 9)
-    state = device.Run()
+    state = Run()
     assert state.most == 500  # a device of an older build
     open_session(node.replica, harbour.peer())
     answer = send(harbour, EXCHANGE, device.ask(node.replica, state), node.replica.token)
@@ -242,7 +243,7 @@ def test_an_answer_is_packed_only_for_those_who_can_unpack_it(harbour, node):
     open_session(node.replica, harbour.peer())
     for n in range(20):
         harbour.central.note(f"fact {n}", "all")
-    request = json.dumps({**device.ask(node.replica, device.Run()), "nonce": "n"}).encode()
+    request = json.dumps({**device.ask(node.replica, Run()), "nonce": "n"}).encode()
     plain = {"content-type": REALM.wire_type, "authorization": f"Bearer {node.replica.token}"}
     _, headers, content = harbour.endpoint.answer("POST", EXCHANGE, plain, request, "r")
     assert "Content-Encoding" not in dict(headers)

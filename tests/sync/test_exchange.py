@@ -13,6 +13,7 @@ from sync.errors import NoContact, Refused
 from sync.exchange import SyncReport, clock_checked, enrol, run
 from sync.keys import DeviceKey
 from sync.peer import Answer, Peer
+from sync.pull import Run
 from sync.replica import Moment, Pin
 
 from .harbour import REALM, Harbour, Node
@@ -220,7 +221,7 @@ def forged(node: Node, **fields: object) -> Entry:
 def push(harbour: Harbour, node: Node, *entries: Entry, first: int = 0) -> dict:
     """Send entries straight to central and return its answer."""
     harbour.sync(node)
-    request = device.ask(node.replica, device.Run())
+    request = device.ask(node.replica, Run())
     log = entries[0].log
     piece = {"log": log, "first": first or entries[0].seq, "entries": wire.pack_all(entries)}
     request["push"] = [piece]
@@ -262,7 +263,7 @@ def test_what_does_not_hold_is_refused_and_what_came_before_it_is_kept(pair, cha
     harbour, node = pair
     good = forged(node)
     bad = forged(node, seq=good.seq + 1, prev=b64(good.hash))
-    request = device.ask(node.replica, device.Run())
+    request = device.ask(node.replica, Run())
     request["push"] = [
         {
             "log": good.log,

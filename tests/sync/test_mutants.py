@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import pytest
 
-from sync import adopt, central, device, ledger
+from sync import adopt, central, compare, device, ledger, reply
 from sync.errors import SyncError
 from sync.ledger import Head
 
@@ -16,7 +16,7 @@ Plant = Callable[[pytest.MonkeyPatch], None]
 
 
 def compares_by_number_only(patch: pytest.MonkeyPatch) -> None:
-    honest = device._View.of
+    honest = compare.View.of
 
     def of(db, log, said, note):
         view = honest(db, log, said, note)
@@ -24,11 +24,11 @@ def compares_by_number_only(patch: pytest.MonkeyPatch) -> None:
         longer = view.there is not None and (mine is None or view.there.seq > mine.seq)
         return replace(view, same=True, why="behind" if longer else None)
 
-    patch.setattr(device._View, "of", staticmethod(of))
+    patch.setattr(compare.View, "of", staticmethod(of))
 
 
 def trusts_old_acknowledgements(patch: pytest.MonkeyPatch) -> None:
-    honest = device._View.of
+    honest = compare.View.of
 
     def of(db, log, said, note):
         view = honest(db, log, said, note)
@@ -36,7 +36,7 @@ def trusts_old_acknowledgements(patch: pytest.MonkeyPatch) -> None:
             return replace(view, there=Head(view.old.seq, view.old.hash), note=None, old=None)
         return view
 
-    patch.setattr(device._View, "of", staticmethod(of))
+    patch.setattr(compare.View, "of", staticmethod(of))
 
 
 def drops_the_divergent_tail(patch: pytest.MonkeyPatch) -> None:
@@ -62,7 +62,7 @@ def central_lets_the_last_writer_win(patch: pytest.MonkeyPatch) -> None:
             _unguarded(db, "DELETE FROM entry WHERE log = ? AND seq >= ?", log, entries[0].seq)
             held = ledger.head(db, log)
             if entries[0].seq != (held.seq if held else 0) + 1:
-                return central.Refusal(log, entries[0].seq, "gap", held)
+                return reply.Refusal(log, entries[0].seq, "gap", held)
             for entry in entries:
                 _insert(db, entry)
             new = [e for e in entries if not _followed(db, e.hash)]
@@ -96,7 +96,7 @@ def pull_cursors_are_numbers(patch: pytest.MonkeyPatch) -> None:
         never = Head(2**62, b"")
         return {**have, **{log: never for log in self.asked.heads}}
 
-    patch.setattr(central._Answer, "_cursors", cursors)
+    patch.setattr(reply.Reply, "_cursors", cursors)
 
 
 def _unguarded(db: sqlite3.Connection, statement: str, *values: object) -> None:

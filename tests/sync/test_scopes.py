@@ -5,6 +5,7 @@ import pytest
 from sync import device, ledger
 from sync.entry import b64
 from sync.ledger import Head
+from sync.pull import Run
 
 from .harbour import Harbour, Node
 
@@ -124,7 +125,7 @@ def test_nobody_reads_the_rest_of_anothers_log(harbour):
     harbour.sync(two)
     harbour.sync(one)
     log = two.own_logs(two.db)[0]
-    request = device.ask(one.replica, device.Run())
+    request = device.ask(one.replica, Run())
     for heads in ({}, {log: {"seq": 0, "hash": ""}}, {log: {"seq": 1, "hash": b64(bytes(32))}}):
         body = {**request, "heads": heads, "want": {log: []}, "nonce": "n"}
         answer = harbour.peer().send("/sync/v1/exchange", body, token=one.replica.token).body
@@ -170,7 +171,7 @@ def test_what_is_given_back_is_verified_like_everything_else(harbour):
     two.note("fact", "route:1")
     harbour.sync(two)
     harbour.sync(one)
-    request = device.ask(one.replica, device.Run())
+    request = device.ask(one.replica, Run())
     log = two.own_logs(two.db)[0]
     forged = {"b": one.db.execute("SELECT body FROM borrowed").fetchone()[0].decode(), "s": "AAAA"}
     request["returned"] = [{"log": log, "entries": [forged, 5, {}]}]
