@@ -53,6 +53,9 @@ def _route_of(pages: Pages, given: Fact) -> str:
     if bottle := getattr(given, "bottle", ""):
         row = pages.bottle(str(bottle))
         return str(row["route"]) if row else ""
+    if cooler := getattr(given, "cooler", ""):
+        entries = pages.story(f"cooler:{cooler}")
+        return next((str(r) for e in entries if (r := getattr(e.fact, "route", ""))), "")
     return ""
 
 

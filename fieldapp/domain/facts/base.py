@@ -73,6 +73,10 @@ class Fact:
         found.extend(f"bottle:{code}" for code in getattr(self, "bottles", ()))
         return tuple(dict.fromkeys(found))
 
+    def blobs(self) -> tuple[dict[str, Any], ...]:
+        """Return the pictures an entry of this fact names, as ``{h, n, t}``."""
+        return ()
+
     @classmethod
     def read(cls, data: Mapping[str, Any], private_part: Mapping[str, Any] | None = None) -> Self:
         """Make the fact from an entry's data; unknown fields are ignored, never refused.

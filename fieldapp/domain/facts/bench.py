@@ -14,6 +14,7 @@ class BottleReceived(Done):
 
     bottle: str
     outcome: str
+    cooler: str = ""
     laboratory: str = ""
     laboratory_number: str = ""
     checks: Mapping[str, str] | None = None

@@ -1,5 +1,7 @@
 """Facts of the Kitchen: what the sampler did and was told at one tap."""
 
+from typing import Any
+
 from fieldapp.domain.facts.base import ROUTE, ROUTE_LAB, Done, fact, private
 
 
@@ -167,3 +169,24 @@ class VisitClosed(Done):
 
     visit: str
     outcome: str
+
+
+@fact("photo.taken", place="kitchen", reach=ROUTE)
+class PhotoTaken(Done):
+    """A photo note. ``about`` is a subject (``visit:…``, ``bottle:…``, ``cooler:…``).
+
+    ``photo`` is the SHA-256 of the picture as kept, ``n`` its bytes, ``media`` its type; the
+    store repeats them in the entry's ``blobs``, by which sync fetches the picture.
+    """
+
+    about: str
+    photo: str
+    n: int
+    media: str
+    visit: str = ""
+    route: str = ""
+    caption: str = private()
+
+    def blobs(self) -> tuple[dict[str, Any], ...]:
+        """Return the picture as an entry names it."""
+        return ({"h": self.photo, "n": self.n, "t": self.media},)
