@@ -96,7 +96,10 @@ def enrol(store: Store, *, url: str, code: str, progress: Callable[..., None]) -
         ``central``, ``person``, ``places``.
     """
     peer = HttpPeer(url, store.realm)
-    answer = enrol_at(peer, store.realm, store.key, store.dev, _plain(code))
+    try:
+        answer = enrol_at(peer, store.realm, store.key, store.dev, _plain(code))
+    finally:
+        peer.close()
     unb64(str(answer["public_key"]))  # a torn answer shows here, before anything is kept
     identity.pin_central(store.folder, {
         "url": url.rstrip("/"), "dev": answer["dev"], "public_key": answer["public_key"],
