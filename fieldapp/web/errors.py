@@ -40,14 +40,14 @@ def rule_broken(fault: RuleBroken) -> Response | tuple[str, int]:
     """Answer a broken rule: nothing was recorded."""
     says = sentence(fault)
     if wants_json():
-        return _json(says, _status(fault), fault.kind)
+        return _json(says, _code_of(fault), fault.kind)
     if isinstance(fault, NoPerson):
         return redirect(url_for("people.first", then=request.full_path), code=303)
     if isinstance(fault, StepOver) and g.get("then"):
         flash(says)
         return redirect(g.then, code=303)
     title = words.gettext("Already recorded") if isinstance(fault, ActDiffers) else ""
-    return page(says, _status(fault), title=title)
+    return page(says, _code_of(fault), title=title)
 
 
 def bad_form(fault: BadForm) -> Response | tuple[str, int]:
@@ -109,7 +109,7 @@ def _json(says: str, status: int, kind: str) -> Response:
     return answer
 
 
-def _status(fault: RuleBroken) -> int:
+def _code_of(fault: RuleBroken) -> int:
     if isinstance(fault, ActDiffers):
         return HTTPStatus.CONFLICT
     return HTTPStatus.NOT_FOUND if isinstance(fault, Unknown) else UNPROCESSABLE
