@@ -54,7 +54,8 @@ def adopt(replica: Replica, log: str, theirs: Sequence[Entry]) -> Adopted:
         lost = [] if mine[same] is None else _from(db, log, rest[0].seq)
         fresh = _keep(replica, db, log, rest, forked=bool(lost))
         for entry in lost:
-            replica.hooks.write(db, CARRIED, carry(entry), refs=[b64(entry.hash)])
+            parcel = replica.hooks.write(db, CARRIED, carry(entry), refs=[b64(entry.hash)])
+            ledger.note_carriage(db, entry.hash, parcel.hash)
         return Adopted(len(lost), fresh, Head(rest[-1].seq, rest[-1].hash))
 
 

@@ -43,6 +43,8 @@ def accept_returned(replica: Replica, dev: str, log: str, sent: list[Any]) -> li
                 entries.append(verified_alone(replica, db, wire.unpack(replica.realm, value)))
             except BadEntry as fault:
                 refusals.append(Refusal(log, 0, "unsigned", says=str(fault)))
+    if not entries:
+        return refusals
     at = replica.hooks.moment().at
     try:
         with replica.hooks.transaction() as db:

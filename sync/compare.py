@@ -2,10 +2,10 @@
 
 import sqlite3
 from dataclasses import dataclass
-from typing import Any
 
-from sync import ledger, wire
+from sync import ledger
 from sync.acknowledgement import Acknowledgement
+from sync.answered import Said
 from sync.encoding import b64
 from sync.ledger import Head
 
@@ -26,12 +26,11 @@ class View:
 
     @classmethod
     def of(
-        cls, db: sqlite3.Connection, log: str, said: Any, note: Acknowledgement | None
+        cls, db: sqlite3.Connection, log: str, said: Said, note: Acknowledgement | None
     ) -> "View":
         """Compare by number and hash; a number alone proves nothing."""
-        there, mine = wire.read_head(said), ledger.head(db, log)
-        at = said["at"]
-        same = at == 0 or b64(ledger.hash_at(db, log, at) or b"") == said["at_hash"]
+        there, mine = said.there, ledger.head(db, log)
+        same = said.at == 0 or b64(ledger.hash_at(db, log, said.at) or b"") == said.at_hash
         longer = there is not None and (mine is None or there.seq > mine.seq)
         why = FORK if not same else BEHIND if longer else None
         if note is not None and ledger.hash_at(db, log, note.seq) != note.hash:

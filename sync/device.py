@@ -16,10 +16,10 @@ from collections.abc import Mapping
 from typing import Any
 
 from sync import ledger, wire
-from sync.acknowledgement import Acknowledgement
 from sync.adopt import adopt
+from sync.answered import Answered
 from sync.compare import View
-from sync.errors import BadEntry, NoContact, Refused
+from sync.errors import BadEntry, Unwritable
 from sync.follow import ODD_DATA
 from sync.ledger import Head
 from sync.pull import Run, hold_back, take_pull
@@ -84,19 +84,14 @@ def take(replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping
     Raises:
         NoContact: The answer is not what central would say; nothing of it was believed.
     """
-    try:
-        noted = _acknowledgements(replica, answer)
-        moved = _take_heads(replica, run, answer, noted)
-        moved |= _take_refusals(run, answer)
-        moved |= _take_tails(replica, run, answer)
-        moved |= take_pull(replica, run, request, answer)
-        moved |= _take_regressed(replica, run, answer)
-        run.denied |= set(wire.read_list(answer.get("denied"), "denied"))
-    except (BadEntry, Refused) as fault:
-        raise NoContact(f"the answer does not hold ({fault})") from fault
-    except (LookupError, TypeError, AttributeError) as fault:
-        raise NoContact("the answer has another shape than central's") from fault
-    run.more = bool(answer.get("more"))
+    said = Answered.read(replica, answer)
+    moved = _take_heads(replica, run, said)
+    moved |= _take_refusals(run, said)
+    moved |= _take_tails(replica, run, said)
+    moved |= take_pull(replica, run, request, said)
+    run.more = said.more
+    moved |= _take_regressed(replica, run, said)
+    run.denied |= set(said.denied)
     return moved
 
 
@@ -158,25 +153,10 @@ def _give_back(db: sqlite3.Connection, run: Run, left: int) -> list[dict[str, An
     return pieces
 
 
-def _acknowledgements(replica: Replica, answer: Mapping[str, Any]) -> dict[str, Acknowledgement]:
-    pin = replica.hooks.central()
-    if pin is None:
-        raise NoContact("this device is enrolled nowhere")
-    found = {}
-    for value in wire.read_list(answer["acknowledgements"], "acknowledgements"):
-        note = Acknowledgement.from_wire(value)
-        note.verify(replica.realm, pin.public_key)
-        found[note.log] = note
-    return found
-
-
-def _take_heads(
-    replica: Replica, run: Run, answer: Mapping[str, Any], noted: dict[str, Acknowledgement]
-) -> bool:
-    said = wire.read_mapping(answer["heads"], "heads")
+def _take_heads(replica: Replica, run: Run, said: Answered) -> bool:
     with replica.hooks.reading() as db:
-        own = [log for log in replica.hooks.own_logs(db) if log in said]
-        views = [View.of(db, log, said[log], noted.get(log)) for log in own]
+        own = [log for log in replica.hooks.own_logs(db) if log in said.heads]
+        views = [View.of(db, log, said.heads[log], said.notes.get(log)) for log in own]
     moved = False
     for view in views:
         moved |= view.log not in run.at_central or run.at_central[view.log] != view.there
@@ -208,11 +188,10 @@ def _settle(replica: Replica, run: Run, db: sqlite3.Connection, view: View) -> N
         replica.hooks.open_log(db, view.why)
 
 
-def _take_refusals(run: Run, answer: Mapping[str, Any]) -> bool:
+def _take_refusals(run: Run, said: Answered) -> bool:
     moved = False
-    for value in wire.read_list(answer["refused"], "refused"):
-        refusal = dict(wire.read_mapping(value, "refused"))
-        log = wire.read_log(refusal["log"])
+    for refusal in said.refused:
+        log = refusal["log"]
         run.tries[log] = run.tries.get(log, 0) + 1
         # A gap or fork is answered by the heads of this answer; anything else waits for people.
         if refusal["why"] in ("gap", "fork") and run.tries[log] < MOST_TRIES:
@@ -224,20 +203,18 @@ def _take_refusals(run: Run, answer: Mapping[str, Any]) -> bool:
     return moved
 
 
-def _take_tails(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
+def _take_tails(replica: Replica, run: Run, said: Answered) -> bool:
     moved = False
-    for value in wire.read_list(answer["tail"], "tail"):
-        log = wire.read_log(value["log"])
+    for log, sent in said.tails:
         if log not in run.fetch:
             continue
-        sent = wire.read_list(value["entries"], "entries")
         try:
             with replica.hooks.reading() as db:
                 entries = [
                     verified_alone(replica, db, wire.unpack(replica.realm, one)) for one in sent
                 ]
             outcome = adopt(replica, log, entries)
-        except (BadEntry, *ODD_DATA) as fault:
+        except (BadEntry, Unwritable, *ODD_DATA) as fault:
             hold_back(run, log, fault)
             continue
         run.carried += outcome.carried
@@ -249,7 +226,7 @@ def _take_tails(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
     return moved
 
 
-def _take_regressed(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bool:
+def _take_regressed(replica: Replica, run: Run, said: Answered) -> bool:
     moved = False
     for log, sent in run.sent_back.items():
         moved = True
@@ -262,8 +239,7 @@ def _take_regressed(replica: Replica, run: Run, answer: Mapping[str, Any]) -> bo
         run.returning.pop(log)
         run.returned.add(log)
         run.more = True
-    for value in wire.read_list(answer["regressed"], "regressed"):
-        log = wire.read_log(value)
+    for log in said.regressed:
         run.regressed.add(log)
         if log not in run.returning and log not in run.returned:
             run.returning[log] = (0, b"")

@@ -3,6 +3,7 @@
 import ipaddress
 import time
 from collections.abc import Mapping
+from pathlib import Path
 from typing import Any
 from urllib.parse import urlsplit
 
@@ -21,13 +22,19 @@ MOST_BYTES = wire.MOST_WIRE_BYTES * 2
 
 
 class HttpPeer:
-    """Central at an address. Plain http is for this machine alone."""
+    """Central at an address. Plain http is for this machine alone.
 
-    def __init__(self, url: str, realm: Realm) -> None:
+    ``authorities`` names a file of certificates (PEM) to trust instead of the usual ones, for a
+    central whose certificate its own office issued.
+    """
+
+    def __init__(self, url: str, realm: Realm, *, authorities: Path | None = None) -> None:
         self.url, self.realm = check_address(url), realm
         self._session = requests.Session()
         # Nothing of the surroundings may switch verification off or add credentials.
         self._session.trust_env = False
+        if authorities is not None:
+            self._session.verify = str(authorities)
 
     def send(self, path: str, body: Mapping[str, Any], *, token: str = "") -> Answer:
         """Return central's answer to one request.

@@ -21,11 +21,13 @@ from sync.shares import (
     acknowledged,
     borrow,
     borrowed_of,
+    carried_by,
     cursors,
     drop_acknowledgement,
     drop_cursors,
     drop_scope,
     keep_acknowledgement,
+    note_carriage,
     scoped,
     set_cursor,
 )
@@ -38,6 +40,7 @@ __all__ = [
     "add_branch",
     "borrow",
     "borrowed_of",
+    "carried_by",
     "cursors",
     "drop_acknowledgement",
     "drop_cursors",
@@ -53,8 +56,10 @@ __all__ = [
     "logs",
     "make_tables",
     "next_stated",
+    "note_carriage",
     "prepare",
     "read",
+    "received",
     "scoped",
     "set_cursor",
     "with_private",
@@ -135,6 +140,23 @@ def read(
                 return found
             found.append(entry)
     return found
+
+
+def received(db: sqlite3.Connection, hash: bytes) -> bool:
+    """Say whether central has acknowledged an own entry, itself or in the entry that carried it.
+
+    A place below the acknowledged one is not enough: it must be of the history acknowledged.
+    """
+    seen: set[bytes] = set()
+    name: bytes | None = hash
+    while name is not None and name not in seen:
+        seen.add(name)
+        row = db.execute("SELECT log, seq FROM entry WHERE hash = ?", (name,)).fetchone()
+        noted = None if row is None else acknowledged(db, row[0])
+        if noted is not None and row[1] <= noted.seq and hash_at(db, row[0], row[1]) == name:
+            return True
+        name = carried_by(db, name)
+    return False
 
 
 def add(

@@ -6,6 +6,7 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from sync import ledger, wire
+from sync.answered import Answered
 from sync.entry import Entry
 from sync.errors import BadEntry, NoContact
 from sync.follow import ODD_DATA, follow
@@ -37,13 +38,10 @@ class Run:
     sent_back: dict[str, list[Entry]] = field(default_factory=dict)
 
 
-def take_pull(
-    replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping[str, Any]
-) -> bool:
+def take_pull(replica: Replica, run: Run, request: Mapping[str, Any], said: Answered) -> bool:
+    """Borrow what the answer brings by scope, each entry verified alone, and move the cursors."""
     moved = False
-    for value in wire.read_list(answer["pull"], "pull"):
-        scope, log = value["scope"], wire.read_log(value["log"])
-        sent = wire.read_list(value["entries"], "entries")
+    for scope, log, sent in said.pulls:
         if scope not in request["have"] or log in run.skip:
             continue  # nothing of the kind was asked for
         entries: list[Entry] = []

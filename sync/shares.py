@@ -154,3 +154,18 @@ def keep_acknowledgement(db: sqlite3.Connection, given: Acknowledgement) -> None
 def drop_acknowledgement(db: sqlite3.Connection, log: str) -> None:
     """Take "received" back to "waiting": central no longer holds what it acknowledged."""
     db.execute("DELETE FROM acknowledgement WHERE log = ?", (log,))
+
+
+def note_carriage(db: sqlite3.Connection, hash: bytes, parcel: bytes) -> None:
+    """Remember which entry carried one over, the last one that did."""
+    db.execute(
+        "INSERT INTO carriage VALUES (?, ?) ON CONFLICT (hash) "
+        "DO UPDATE SET parcel = excluded.parcel",
+        (hash, parcel),
+    )
+
+
+def carried_by(db: sqlite3.Connection, hash: bytes) -> bytes | None:
+    """Return the hash of the entry that carried this one over, or None."""
+    row = db.execute("SELECT parcel FROM carriage WHERE hash = ?", (hash,)).fetchone()
+    return None if row is None else bytes(row[0])

@@ -66,6 +66,9 @@ TABLES = (
     """CREATE TABLE IF NOT EXISTS entry_scope (
         scope TEXT NOT NULL, log TEXT NOT NULL, seq INTEGER NOT NULL, hash BLOB NOT NULL,
         PRIMARY KEY (scope, log, seq, hash)) STRICT, WITHOUT ROWID""",
+    # Which entry carried one over that stands in a history central does not name.
+    """CREATE TABLE IF NOT EXISTS carriage (
+        hash BLOB PRIMARY KEY, parcel BLOB NOT NULL) STRICT, WITHOUT ROWID""",
     # Entries kept here that page tables could not take; a person's list, emptied by a rebuild.
     """CREATE TABLE IF NOT EXISTS unfollowed (
         hash BLOB PRIMARY KEY, log TEXT NOT NULL, seq INTEGER NOT NULL, says TEXT NOT NULL

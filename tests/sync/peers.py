@@ -1,6 +1,7 @@
 """Ways to reach a central in tests: in the process, over HTTP, and over a line full of faults."""
 
 import random
+import ssl
 import threading
 from collections.abc import Callable, Iterator, Mapping
 from contextlib import contextmanager
@@ -69,7 +70,10 @@ def seeded(seed: int, share: float) -> Iterator[str | None]:
 
 
 @contextmanager
-def served(answer: Callable[..., tuple[int, list[tuple[str, str]], bytes]]) -> Iterator[str]:
+def served(
+    answer: Callable[..., tuple[int, list[tuple[str, str]], bytes]],
+    tls: ssl.SSLContext | None = None,
+) -> Iterator[str]:
     """Serve one function on a free port of this machine and yield its address."""
 
     class Door(BaseHTTPRequestHandler):
@@ -90,11 +94,17 @@ def served(answer: Callable[..., tuple[int, list[tuple[str, str]], bytes]]) -> I
         def log_message(self, format: str, *args: object) -> None:
             """Say nothing."""
 
-    server = ThreadingHTTPServer(("127.0.0.1", 0), Door)
+    class Server(ThreadingHTTPServer):
+        def handle_error(self, request: object, client_address: object) -> None:
+            """Say nothing of a caller who hung up."""
+
+    server = Server(("127.0.0.1", 0), Door)
+    if tls is not None:
+        server.socket = tls.wrap_socket(server.socket, server_side=True)
     thread = threading.Thread(target=server.serve_forever, args=(0.01,))
     thread.start()
     try:
-        yield f"http://127.0.0.1:{server.server_port}"
+        yield f"{'https' if tls else 'http'}://127.0.0.1:{server.server_port}"
     finally:
         server.shutdown()
         thread.join()

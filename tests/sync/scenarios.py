@@ -27,6 +27,9 @@ def assert_acknowledged(harbour: Harbour, node: Node) -> None:
         assert held is not None
         assert ledger.hash_at(harbour.central.db, log, noted.seq) == noted.hash
         assert (noted.seq, noted.hash) == (held.seq, held.hash)
+    own = "SELECT hash FROM entry WHERE log IN (SELECT log FROM own)"
+    for (hash_,) in node.db.execute(own).fetchall():
+        assert ledger.received(node.db, hash_)
 
 
 def device_restored() -> None:

@@ -2,11 +2,20 @@
 
 import gzip
 import json
+import ssl
 from collections.abc import Mapping
+from concurrent.futures import ThreadPoolExecutor
+from datetime import UTC, datetime, timedelta
+from ipaddress import ip_address
 from itertools import pairwise
+from pathlib import Path
 from typing import Any
 
 import pytest
+from cryptography import x509
+from cryptography.hazmat.primitives import hashes, serialization
+from cryptography.hazmat.primitives.asymmetric import ec
+from cryptography.x509.oid import NameOID
 
 from sync import device, wire
 from sync.endpoint import MOST_CHALLENGES, MOST_FAILURES, Endpoint, session_proof
@@ -376,6 +385,64 @@ def test_a_central_that_is_not_there_is_no_contact(node):
         pass
     with pytest.raises(NoContact, match="the line failed"):
         run(node.replica, HttpPeer(url, REALM))
+
+
+@pytest.fixture(scope="module")
+def certificate(tmp_path_factory) -> tuple[ssl.SSLContext, Path]:
+    """Return a server's TLS and the certificate it shows, which it signed itself."""
+    folder = tmp_path_factory.mktemp("tls")
+    key = ec.generate_private_key(ec.SECP256R1())
+    name = x509.Name([x509.NameAttribute(NameOID.COMMON_NAME, "central.example")])
+    here = x509.SubjectAlternativeName([x509.IPAddress(ip_address("127.0.0.1"))])
+    start = datetime.now(UTC) - timedelta(days=1)
+    made = (
+        x509.CertificateBuilder()
+        .subject_name(name)
+        .issuer_name(name)
+        .public_key(key.public_key())
+        .serial_number(1)
+        .not_valid_before(start)
+        .not_valid_after(start + timedelta(days=30))
+        .add_extension(here, critical=False)
+        .sign(key, hashes.SHA256())
+    )
+    shown, secret = folder / "shown.pem", folder / "secret.pem"
+    shown.write_bytes(made.public_bytes(serialization.Encoding.PEM))
+    secret.write_bytes(
+        key.private_bytes(
+            serialization.Encoding.PEM,
+            serialization.PrivateFormat.PKCS8,
+            serialization.NoEncryption(),
+        )
+    )
+    tls = ssl.SSLContext(ssl.PROTOCOL_TLS_SERVER)
+    tls.load_cert_chain(shown, secret)
+    return tls, shown
+
+
+def test_a_certificate_that_nobody_vouches_for_is_no_contact(harbour, node, certificate):
+    tls, shown = certificate
+    node.note("fact")
+    with served(harbour.endpoint.answer, tls) as url:
+        with pytest.raises(NoContact, match="certificate"):
+            run(node.replica, HttpPeer(url, REALM))
+        assert harbour.central.texts() == []
+        assert run(node.replica, HttpPeer(url, REALM, authorities=shown)).waiting == 0
+    assert harbour.central.texts() == ["fact"]
+
+
+def test_eight_machines_at_once_lose_nothing(harbour, node):
+    node.note("before")
+    harbour.sync(node)
+    twins = [node.clone() for _ in range(8)]
+    for number, twin in enumerate(twins):
+        for n in range(5):
+            twin.note(f"twin {number}, fact {n}")
+    with served(harbour.endpoint.answer) as url, ThreadPoolExecutor(8) as pool:
+        reports = list(pool.map(lambda twin: run(twin.replica, HttpPeer(url, REALM)), twins))
+    assert [report.waiting for report in reports] == [0] * 8
+    assert len(harbour.central.facts()) == 41
+    assert len(harbour.central.texts()) == 41
 
 
 def test_retries_wait_longer_and_longer_within_bounds_and_spread():

@@ -114,19 +114,16 @@ def test_a_kept_document_may_be_longer_than_a_fact():
     assert compose(REALM, KEY, fields, limit=24 * 1024).seq == 1
 
 
+def composed(text: str) -> str:
+    return unicodedata.normalize("NFC", text)
+
+
+texts = st.text(st.characters(codec="utf-8")).map(composed)
+# A few old ideographs leave the first plane when they are normalised, and keys may not.
+keys = texts.filter(lambda text: all(letter <= "\uffff" for letter in text))
 written = st.recursive(
-    st.text(st.characters(codec="utf-8")).map(lambda text: unicodedata.normalize("NFC", text))
-    | st.integers(-(2**53) + 1, 2**53 - 1)
-    | st.booleans(),
-    lambda inner: (
-        st.lists(inner)
-        | st.dictionaries(
-            st.text(st.characters(codec="utf-8", max_codepoint=0xFFFF)).map(
-                lambda text: unicodedata.normalize("NFC", text)
-            ),
-            inner,
-        )
-    ),
+    texts | st.integers(-(2**53) + 1, 2**53 - 1) | st.booleans(),
+    lambda inner: st.lists(inner) | st.dictionaries(keys, inner),
     max_leaves=12,
 )
 

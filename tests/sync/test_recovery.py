@@ -8,7 +8,9 @@ from sync import ledger
 from sync.adopt import carried, carry
 from sync.encoding import b64
 from sync.entry import CARRIED, MOST_READ, compose, new_log_id, reveal, verify
-from sync.errors import BadEntry
+from sync.errors import BadEntry, NoContact
+from sync.exchange import run
+from sync.peer import Peer
 from sync.verify import verify_folder
 
 from .harbour import REALM, Harbour, Node
@@ -110,17 +112,52 @@ def test_a_parcel_with_nothing_readable_inside_is_refused(data):
         carried(REALM, {"kind": CARRIED, "data": data})
 
 
+class Cut:
+    """A line that fails after so many calls."""
+
+    def __init__(self, peer: Peer, calls: int) -> None:
+        self.peer, self.calls = peer, calls
+
+    def send(self, path, body, *, token=""):
+        if self.calls == 0:
+            raise NoContact("the line was cut")
+        self.calls -= 1
+        return self.peer.send(path, body, token=token)
+
+
 def test_received_goes_back_to_waiting_when_central_was_restored():
     harbour = Harbour()
     node = harbour.device("D-01")
     harbour.sync(node)
     copy = harbour.central.snapshot()
-    node.note("fact")
-    assert harbour.sync(node).waiting == 0
+    fact = node.note("fact")
+    harbour.sync(node)
+    assert ledger.received(node.db, fact)
     harbour.restore_central(copy)
-    # The line fails right after central's first answer, so nothing could be sent again yet.
+    # The old session is refused and a new one takes two calls; the next answer tells of the loss.
+    with pytest.raises(NoContact):
+        run(node.replica, Cut(harbour.peer(), 4))
+    assert not ledger.received(node.db, fact)
     report = harbour.sync(node)
-    assert (report.regressed, report.waiting) == (1, 0)
+    assert (report.waiting, ledger.received(node.db, fact)) == (0, True)
+
+
+def test_an_entry_of_a_losing_history_is_received_only_with_the_one_that_carries_it():
+    harbour = Harbour()
+    node = harbour.device("D-01")
+    harbour.sync(node)
+    twin = node.clone()
+    for n in range(3):
+        node.note(f"first {n}")
+    harbour.sync(node)
+    fact = twin.note("second")
+    # After the session's two calls one exchange tells of the fork and one brings the history.
+    with pytest.raises(NoContact):
+        run(twin.replica, Cut(harbour.peer(), 4))
+    assert ledger.carried_by(twin.db, fact) is not None
+    assert not ledger.received(twin.db, fact)
+    harbour.sync(twin)
+    assert ledger.received(twin.db, fact)
 
 
 @pytest.mark.parametrize("story", ["clone", "restore", "central"])
