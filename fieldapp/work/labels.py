@@ -10,7 +10,7 @@ from fieldapp.domain.decision import Decision
 from fieldapp.domain.recorded import Reading
 from fieldapp.identity import new_act
 from fieldapp.printing.labels import Label, labels_pdf
-from fieldapp.printing.sheets import parse_roll, parse_sheet
+from fieldapp.printing.sheets import BadSheet, parse_roll, parse_sheet
 from fieldapp.projections.pages import Pages
 from fieldapp.store import Store
 from fieldapp.words import gettext as _
@@ -36,7 +36,12 @@ def print_labels(
 
     Returns:
         ``codes`` in order, ``issued`` anew, ``pdf`` as base64.
+
+    Raises:
+        CannotPrint: The paper cannot be; no code was issued for it.
     """
+    if sheet and roll:  # before a code is issued for paper that cannot be
+        raise BadSheet(_("Labels go on a sheet or on a roll. Name one of them."))
     paper = {
         "sheet": parse_sheet(sheet) if sheet else None,
         "roll": parse_roll(roll) if roll else None,
