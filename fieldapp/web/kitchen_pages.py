@@ -133,7 +133,7 @@ def stops_of(route: str) -> list[dict[str, Any]]:
 def next_of(stops: Sequence[Mapping[str, Any]]) -> Mapping[str, Any] | None:
     """Return the stop to go to: one begun, one that rings, one to do, then one that waits."""
     for state in ("open", "ready", "planned", "left"):
-        found = [one for one in stops if one["state"] == state]
+        found = [one for one in stops if one["state"] == state and not one["dropped"]]
         if found:
             return (
                 min(found, key=lambda one: one["earliest"] or "") if state == "left" else found[0]
