@@ -43,7 +43,7 @@ class Running:
 
 def read_running(folder: Path) -> Running | None:
     """Return where the folder's node says it runs; nothing where it does not say."""
-    with contextlib.suppress(OSError, ValueError, KeyError):
+    with contextlib.suppress(OSError, ValueError, KeyError, TypeError):
         found = json.loads((folder / RUNNING).read_text("utf-8"))
         return Running(int(found["port"]), str(found["token"]))
     return None
@@ -191,6 +191,7 @@ def _hand_to(
 
 
 def _lines(running: Running, name: str, asked: Mapping[str, Any]) -> Iterator[dict[str, Any]]:
+    from http.client import HTTPException
     from urllib import error, request
 
     post = request.Request(
@@ -202,13 +203,15 @@ def _lines(running: Running, name: str, asked: Mapping[str, Any]) -> Iterator[di
     try:
         with opener.open(post) as answer:
             for line in answer:
+                if not line.endswith(b"\n"):
+                    return  # cut off in the middle of a word
                 yield json.loads(line)
     except error.HTTPError as fault:
         raise HandedBack(
             [f"The running node refused the work ({fault.code}). Restart it and try again."],
             known=True,
         ) from fault
-    except OSError as fault:
+    except (OSError, HTTPException) as fault:
         raise HandedBack(
             ["The running node does not answer. Stop it, then run the command again."], known=True
         ) from fault
