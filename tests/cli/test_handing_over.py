@@ -233,10 +233,12 @@ def was_answered(folder: Path, file: Path, progress: Callable[..., object]) -> b
     try:
         hand_over(folder, "round-import", asked(file), progress)
     except HandedBack as fault:
-        assert str(fault).endswith("un the command again."), fault
-        assert fault.known
-        return False
-    return True
+        said = fault
+    else:
+        return True
+    assert said.known
+    assert str(said).endswith("un the command again.")
+    return False
 
 
 def hold_all_or_nothing(folder: Path, file: Path, *, answered: bool) -> None:
