@@ -18,7 +18,7 @@ class Asked:
     push: list[tuple[str, int, list[Any]]]
     returned: list[tuple[str, list[Any]]]
     want: dict[str, list[Head]]
-    have: dict[str, dict[str, Head]]
+    have: dict[str, dict[str, tuple[Head, str]]]  # with the sum of what is held up to there
     skip: frozenset[str]
 
     @classmethod
@@ -50,10 +50,7 @@ class Asked:
                 ]
                 for log, marks in wire.read_mapping(request.get("want"), "want").items()
             },
-            have={
-                scope: {log: head for log, head in wire.read_heads(logs).items() if head}
-                for scope, logs in have.items()
-            },
+            have={scope: _read_cursors(logs) for scope, logs in have.items()},
             skip=frozenset(
                 wire.read_log(log) for log in wire.read_list(request.get("skip"), "skip")
             ),
@@ -66,3 +63,14 @@ def _read_push(value: object) -> tuple[str, int, list[Any]]:
     if type(first) is not int or first < 1:
         raise wire.malformed("a push does not say with which entry it begins")
     return wire.read_log(piece.get("log")), first, wire.read_list(piece.get("entries"), "entries")
+
+
+def _read_cursors(value: object) -> dict[str, tuple[Head, str]]:
+    found = {}
+    for log, place in wire.read_heads(value).items():
+        sum_ = wire.read_mapping(value, "have")[log].get("gist", "")
+        if not isinstance(sum_, str):
+            raise wire.malformed("a sum is no text")
+        if place is not None:
+            found[log] = (place, sum_)
+    return found

@@ -44,7 +44,6 @@ def ask(replica: Replica, run: Run) -> dict[str, Any]:
     with replica.hooks.reading() as db:
         own = replica.hooks.own_logs(db)
         heads = {log: ledger.head(db, log) for log in own}
-        got = ledger.cursors(db)
         left, size, push = run.most, run.most_bytes, []
         for log in own:
             if log in run.blocked or log in run.fetch or left < 1 or size < 1:
@@ -56,10 +55,7 @@ def ask(replica: Replica, run: Run) -> dict[str, Any]:
                 size -= sum(len(entry.body) + len(entry.private or b"") for entry in entries)
                 push.append({"log": log, "first": first, "entries": wire.pack_all(entries)})
         returned = _give_back(db, run, left if size > 0 else 0)
-        have = {
-            scope: {log: wire.pack_head(place) for log, place in got.get(scope, {}).items()}
-            for scope in replica.hooks.scopes(db)
-        }
+        have = {scope: _cursors(db, run, scope, own) for scope in replica.hooks.scopes(db)}
         want = {log: _marks(db, log, common) for log, common in run.fetch.items()}
     moment = replica.hooks.moment()
     return {
@@ -90,7 +86,7 @@ def take(replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping
     moved |= _take_tails(replica, run, said)
     moved |= take_pull(replica, run, request, said)
     run.more = said.more
-    moved |= _take_regressed(replica, run, said)
+    moved |= _take_regressed(run, said)
     run.denied |= set(said.denied)
     return moved
 
@@ -131,6 +127,22 @@ def _marks(db: sqlite3.Connection, log: str, common: Head | None) -> list[dict[s
             places.append(Head(held.seq - back, hash_))
         back = back * 2 + 1
     return [wire.pack_head(place) for place in places]
+
+
+def _cursors(
+    db: sqlite3.Connection, run: Run, scope: str, own: list[str]
+) -> dict[str, dict[str, Any]]:
+    """Return how far one scope was got, log by log, with the sum of what is held up to there."""
+    found: dict[str, dict[str, Any]] = {}
+    for log, place in ledger.cursors(db, scope).items():
+        if log in own:
+            continue
+        if log not in run.returned:
+            sum_ = ledger.gist(db, scope, log, place)
+            found[log] = {**wire.pack_head(place), "gist": sum_}
+        elif (scope, log) in run.again:  # it is being pulled once more from its beginning
+            found[log] = wire.pack_head(run.again[scope, log])
+    return found
 
 
 def _give_back(db: sqlite3.Connection, run: Run, left: int) -> list[dict[str, Any]]:
@@ -226,7 +238,7 @@ def _take_tails(replica: Replica, run: Run, said: Answered) -> bool:
     return moved
 
 
-def _take_regressed(replica: Replica, run: Run, said: Answered) -> bool:
+def _take_regressed(run: Run, said: Answered) -> bool:
     moved = False
     for log, sent in run.sent_back.items():
         moved = True
@@ -234,8 +246,6 @@ def _take_regressed(replica: Replica, run: Run, said: Answered) -> bool:
             run.returning[log] = (sent[-1].seq, sent[-1].hash)
             continue
         # All of it was given back: now it is pulled again, from its beginning.
-        with replica.hooks.transaction() as db:
-            ledger.drop_cursors(db, log)
         run.returning.pop(log)
         run.returned.add(log)
         run.more = True

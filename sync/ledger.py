@@ -24,12 +24,11 @@ from sync.shares import (
     carried_by,
     cursors,
     drop_acknowledgement,
-    drop_cursors,
     drop_scope,
+    gist,
     keep_acknowledgement,
     note_carriage,
     scoped,
-    set_cursor,
 )
 from sync.tables import make_tables, prepare
 
@@ -43,9 +42,9 @@ __all__ = [
     "carried_by",
     "cursors",
     "drop_acknowledgement",
-    "drop_cursors",
     "drop_scope",
     "find",
+    "gist",
     "hash_at",
     "head",
     "heads",
@@ -61,7 +60,6 @@ __all__ = [
     "read",
     "received",
     "scoped",
-    "set_cursor",
     "with_private",
 ]
 

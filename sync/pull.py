@@ -8,11 +8,13 @@ from typing import Any
 from sync import ledger, wire
 from sync.answered import Answered
 from sync.entry import Entry
-from sync.errors import BadEntry, NoContact
+from sync.errors import BadEntry
 from sync.follow import ODD_DATA, follow
 from sync.ledger import Head
 from sync.replica import Replica
 from sync.trust import verified_alone
+
+NOTHING = {"seq": 0, "hash": ""}
 
 
 @dataclass
@@ -24,6 +26,7 @@ class Run:
     at_central: dict[str, Head | None] = field(default_factory=dict)
     fetch: dict[str, Head | None] = field(default_factory=dict)  # log -> place known to be common
     returning: dict[str, tuple[int, bytes]] = field(default_factory=dict)
+    again: dict[tuple[str, str], Head] = field(default_factory=dict)  # last pulled in this run
     returned: set[str] = field(default_factory=set)
     skip: set[str] = field(default_factory=set)
     tries: dict[str, int] = field(default_factory=dict)
@@ -44,14 +47,12 @@ def take_pull(replica: Replica, run: Run, request: Mapping[str, Any], said: Answ
     for scope, log, sent in said.pulls:
         if scope not in request["have"] or log in run.skip:
             continue  # nothing of the kind was asked for
+        past = wire.read_head(request["have"][scope].get(log, NOTHING))
         entries: list[Entry] = []
         with replica.hooks.reading() as db:
             for one in sent:
                 try:
-                    entries.append(_pulled(replica, db, log, one))
-                    past = wire.read_head(request["have"][scope].get(log) or {"seq": 0})
-                    if past is not None and entries[-1].seq <= past.seq:
-                        raise NoContact("it sends again what this device has")
+                    entries.append(_pulled(replica, db, log, one, past))
                 except BadEntry as fault:
                     hold_back(run, log, fault)
                     moved = True
@@ -61,17 +62,20 @@ def take_pull(replica: Replica, run: Run, request: Mapping[str, Any], said: Answ
     return moved
 
 
-def _pulled(replica: Replica, db: sqlite3.Connection, log: str, value: object) -> Entry:
+def _pulled(
+    replica: Replica, db: sqlite3.Connection, log: str, value: object, past: Head | None
+) -> Entry:
     entry = verified_alone(replica, db, wire.unpack(replica.realm, value))
     if entry.log != log:
         raise BadEntry("it is of another log than it was sent for")
+    if past is not None and (entry.seq, entry.hash) <= (past.seq, past.hash):
+        raise BadEntry("it was sent though it is held already")
     return entry
 
 
 def _borrow(replica: Replica, run: Run, scope: str, log: str, entries: list[Entry]) -> bool:
     pin = replica.hooks.central()
     at, frm = replica.hooks.moment().at, pin.dev if pin else ""
-    last = entries[-1]
     try:
         with replica.hooks.transaction() as db:
             fresh = [
@@ -80,11 +84,11 @@ def _borrow(replica: Replica, run: Run, scope: str, log: str, entries: list[Entr
                 if ledger.borrow(db, entry, scope=scope, at=at, frm=frm, realm=replica.realm)
             ]
             follow(replica, db, fresh)
-            ledger.set_cursor(db, scope, log, Head(last.seq, last.hash))
     except ODD_DATA as fault:
         hold_back(run, log, fault)
         return True
     run.pulled += len(fresh)
+    run.again[scope, log] = Head(entries[-1].seq, entries[-1].hash)
     return True
 
 

@@ -17,6 +17,9 @@ from sync.rows import (
     with_private,
 )
 
+GIST_BYTES = 16
+BEGINNING = Head(0, b"")
+
 
 def borrow(
     db: sqlite3.Connection,
@@ -59,31 +62,40 @@ def borrowed_of(
     return [with_private(db, entry_of(row)) for row in rows]
 
 
-def set_cursor(db: sqlite3.Connection, scope: str, log: str, place: Head) -> None:
-    """Remember the entry last got of one log under one scope."""
-    db.execute(
-        "INSERT INTO cursor VALUES (?, ?, ?, ?) ON CONFLICT (scope, log) "
-        "DO UPDATE SET seq = excluded.seq, hash = excluded.hash",
-        (scope, log, place.seq, place.hash),
-    )
+def cursors(db: sqlite3.Connection, scope: str) -> dict[str, Head]:
+    """Return by log the last entry that was borrowed under one scope.
 
-
-def cursors(db: sqlite3.Connection) -> dict[str, dict[str, Head]]:
-    """Return by scope and log the entry last got."""
-    found: dict[str, dict[str, Head]] = {}
-    for scope, log, seq, hash_ in db.execute("SELECT scope, log, seq, hash FROM cursor"):
-        found.setdefault(scope, {})[log] = Head(seq, bytes(hash_))
+    Nothing is remembered apart from the entries themselves, so nothing can disagree with them.
+    """
+    found: dict[str, Head] = {}
+    for log in _logs_of_scope(db, scope):
+        row = db.execute(
+            "SELECT seq, hash FROM entry_scope WHERE scope = ? AND log = ? "
+            "ORDER BY seq DESC, hash DESC LIMIT 1",
+            (scope, log),
+        ).fetchone()
+        found[log] = Head(row[0], bytes(row[1]))
     return found
 
 
-def drop_cursors(db: sqlite3.Connection, log: str) -> None:
-    """Forget how far one log was got, so that it is pulled again from its beginning."""
-    db.execute("DELETE FROM cursor WHERE log = ?", (log,))
+def gist(db: sqlite3.Connection, scope: str, log: str, upto: Head) -> str:
+    """Return a short sum of all that one scope holds of a log up to a place, in any order.
+
+    Two nodes with equal sums hold the same; the place alone would hide what is missing before it.
+    """
+    count, total = 0, 0
+    rows = db.execute(
+        "SELECT hash FROM entry_scope WHERE scope = ? AND log = ? AND (seq, hash) <= (?, ?)",
+        (scope, log, upto.seq, upto.hash),
+    )
+    for (hash_,) in rows:
+        count += 1
+        total ^= int.from_bytes(hash_[:GIST_BYTES], "big")
+    return f"{count}.{total:x}"
 
 
 def drop_scope(db: sqlite3.Connection, scope: str) -> None:
-    """Give back what was borrowed by one scope and by no other, with its cursors."""
-    db.execute("DELETE FROM cursor WHERE scope = ?", (scope,))
+    """Give back what was borrowed by one scope and by no other; its cursors go with it."""
     db.execute(
         "DELETE FROM entry_scope WHERE scope = ? AND hash IN (SELECT hash FROM borrowed)",
         (scope,),
@@ -106,11 +118,11 @@ def scoped(
     """
     found: list[Entry] = []
     for log in dict.fromkeys((*first, *_logs_of_scope(db, scope))):
-        start = after[log].seq if log in after else 0
+        start = after.get(log, BEGINNING)
         rows = db.execute(
-            "SELECT hash FROM entry_scope WHERE scope = ? AND log = ? AND seq > ? "
+            "SELECT hash FROM entry_scope WHERE scope = ? AND log = ? AND (seq, hash) > (?, ?) "
             "ORDER BY seq, hash LIMIT ?",
-            (scope, log, start, most - len(found)),
+            (scope, log, start.seq, start.hash, most - len(found)),
         ).fetchall()
         for (hash_,) in rows:
             entry = find(db, hash_)

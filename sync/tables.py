@@ -60,9 +60,7 @@ TABLES = (
     """CREATE TABLE IF NOT EXISTS acknowledgement (
         log TEXT PRIMARY KEY, seq INTEGER NOT NULL, hash BLOB NOT NULL, at TEXT NOT NULL,
         key TEXT NOT NULL, sig BLOB NOT NULL) STRICT""",
-    """CREATE TABLE IF NOT EXISTS cursor (
-        scope TEXT NOT NULL, log TEXT NOT NULL, seq INTEGER NOT NULL, hash BLOB NOT NULL,
-        PRIMARY KEY (scope, log)) STRICT, WITHOUT ROWID""",
+    # By which scopes an entry is pulled; of borrowed ones, by which it was.
     """CREATE TABLE IF NOT EXISTS entry_scope (
         scope TEXT NOT NULL, log TEXT NOT NULL, seq INTEGER NOT NULL, hash BLOB NOT NULL,
         PRIMARY KEY (scope, log, seq, hash)) STRICT, WITHOUT ROWID""",

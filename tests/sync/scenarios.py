@@ -161,6 +161,40 @@ def centrals_own_facts_come_back() -> None:
     assert other.texts() == ["planned on Monday", "planned on Tuesday"]
 
 
+def centrals_own_facts_come_back_twice() -> None:
+    """Central falls back again before the device has pulled anew."""
+    harbour = Harbour()
+    node = harbour.device("D-01", "route:1")
+    copy = harbour.central.snapshot()
+    harbour.central.note("planned on Monday", "route:1")
+    harbour.sync(node)
+    for _ in range(3):
+        harbour.restore_central(copy)
+        harbour.sync(node)
+    assert_all_there(harbour, node)
+    assert harbour.central.texts() == ["planned on Monday"]
+
+
+def a_missing_entry_below_the_cursor_comes_back() -> None:
+    """Central keeps the entry at the cursor and has lost one before it."""
+    harbour = Harbour()
+    one, two = harbour.device("D-01", "route:1"), harbour.device("D-02", "route:1")
+    copy = harbour.central.snapshot()
+    harbour.central.note("planned on Monday", "route:1")
+    harbour.sync(one)
+    harbour.restore_central(copy)
+    harbour.central.note("planned on Tuesday", "route:1")
+    harbour.central.note("planned on Wednesday", "route:1")
+    harbour.sync(two)
+    before_monday_came_back = harbour.central.snapshot()
+    harbour.sync(one)
+    harbour.sync(two)
+    assert len(two.texts()) == 3
+    harbour.restore_central(before_monday_came_back)
+    assert_all_there(harbour, one, two)
+    assert len(harbour.central.texts()) == 3
+
+
 def carried_twice() -> None:
     """A carried entry is itself lost and carried again: the inner one travels, once."""
     harbour = Harbour()
@@ -221,6 +255,8 @@ STORIES = [
     central_restored_and_device_restored,
     central_restored_between_clones,
     centrals_own_facts_come_back,
+    centrals_own_facts_come_back_twice,
+    a_missing_entry_below_the_cursor_comes_back,
     carried_twice,
     sent_again_after_a_lost_answer,
 ]

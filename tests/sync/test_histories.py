@@ -95,8 +95,17 @@ class Fleet(RuleBasedStateMachine):
         for node in self.nodes:
             alive |= node.facts()
         self.harbour.drain(*self.nodes)
+        self.harbour.drain(*self.nodes)
         lost = alive - self.harbour.central.facts()
         assert not lost, f"{len(lost)} saved facts are nowhere at central"
+        shared = {
+            entry.hash
+            for scope in ("all", "route:1")
+            for entry in ledger.scoped(self.harbour.central.db, scope, {}, 10_000)
+            if entry.fields()["kind"] == "note.made"
+        }
+        for node in self.nodes:
+            assert shared <= node.facts(), "a device does not have what its scopes hold"
         for one in (*self.nodes, self.harbour.central):
             rows = one.db.execute("SELECT COUNT(*) FROM unfollowed").fetchone()
             assert rows == (0,), "an entry was followed twice"

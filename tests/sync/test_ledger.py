@@ -200,11 +200,24 @@ def test_a_borrowed_entry_goes_with_the_last_scope_it_came_by(db):
     assert ledger.borrow(db, first, scope="route:1", at="t", frm="C")
     assert not ledger.borrow(db, first, scope="route:2", at="t", frm="C")
     ledger.borrow(db, second, scope="route:1", at="t", frm="C")
-    ledger.set_cursor(db, "route:1", first.log, Head(2, second.hash))
+    assert ledger.cursors(db, "route:1") == {first.log: Head(2, second.hash)}
     ledger.drop_scope(db, "route:1")
     assert ledger.find(db, first.hash) == first
     assert ledger.find(db, second.hash) is None
-    assert ledger.cursors(db) == {}
+    assert ledger.cursors(db, "route:1") == {}
+    assert ledger.cursors(db, "route:2") == {first.log: Head(1, first.hash)}
+
+
+def test_a_sum_tells_what_is_missing_before_a_cursor(db):
+    entries = chain(4)
+    last = Head(4, entries[3].hash)
+    sums = set()
+    for entry in (entries[3], entries[0], entries[2], entries[1]):
+        ledger.borrow(db, entry, scope="all", at="t", frm="C")
+        sums.add(ledger.gist(db, "all", entry.log, last))
+    assert len(sums) == 4
+    assert ledger.gist(db, "all", last_log := entries[0].log, last) in sums
+    assert ledger.gist(db, "all", last_log, Head(2, entries[1].hash)) not in sums
 
 
 def test_a_borrowed_entry_that_arrives_with_its_whole_log_is_kept_once(db):

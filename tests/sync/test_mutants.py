@@ -92,8 +92,9 @@ def central_accepts_gaps(patch: pytest.MonkeyPatch) -> None:
 def pull_cursors_are_numbers(patch: pytest.MonkeyPatch) -> None:
     """Central resumes from the number alone and never learns that it lost something."""
 
-    def cursors(self, have):
+    def cursors(self, scope):
         never = Head(2**62, b"")
+        have = {log: place for log, (place, _) in self.asked.have[scope].items()}
         return {**have, **{log: never for log in self.asked.heads}}
 
     patch.setattr(reply.Reply, "_cursors", cursors)
