@@ -88,6 +88,14 @@ def test_leaving_to_wait_goes_on_to_the_next_stop(tap: Tap, sampler: Reader):
     assert tap.standing(VISIT).state == "left"
 
 
+def test_the_reason_for_leaving_may_follow_in_the_van(tap: Tap, sampler: Reader):
+    tap.press(kitchen.open_visit, VISIT)
+    sampler.land(path(more="/different"), path(more="/leave"), why="child-alone")
+    sampler.land(path(), path(more="/leave"), reason="about ten years old")
+    assert [one.why for one in tap.facts(VISIT, "visit.left")] == ["child-alone"] * 2
+    assert tap.standing(VISIT).state == "left"
+
+
 def test_nobody_chosen_is_asked_who_first(tap: Tap):
     stranger = Reader(tap, "")
     assert urlsplit(stranger.client.get("/kitchen/").location).path == "/"
