@@ -443,8 +443,8 @@ class Store:
             "log": log, "seq": head.seq + 1 if head else 1, "prev": b64(head.hash) if head else "",
             "dev": self.dev, "kind": given.kind, "id": act, "at": text(moment.at),
             "off": moment.off, "mono": moment.mono, "boot": moment.boot, "by": by, "auth": auth,
-            "scope": scope_of(Pages(db), given), "refs": [n for n in names if n], "blobs": list(given.blobs()),
-            "data": given.data(),
+            "scope": scope_of(Pages(db), given), "refs": [n for n in names if n],
+            "blobs": list(given.blobs()), "data": given.data(),
         }  # fmt: skip
         if central_time := self.get("ct"):
             fields["ct"] = json.loads(central_time)

@@ -16,33 +16,6 @@ from fieldapp.domain.protocols.standing import Due, Standing
 from fieldapp.domain.recorded import Reading, Recorded
 from fieldapp.domain.timetext import format_utc, in_utc
 
-SENTENCES = {
-    "no-protocol": (
-        "The protocol {protocol} of this visit has not reached this device. Send and fetch, then"
-        " open the visit again."
-    ),
-    "not-yet": "{stated} lies ahead of this device's clock. Give a time that has passed.",
-    "strange-answer": "{answer} is no answer to this question. Choose one of those shown.",
-    "not-started": "This visit has not begun. Open it first.",
-    "bad-code": "{code} is no bottle code. Read it from the label again.",
-    "bad-code-character": (
-        "{character}, at place {place}, is in no bottle code. Read the label again, or scan it."
-    ),
-    "bad-code-length": "A bottle code has {wanted} characters; this has {length}. Read it again.",
-    "bad-code-check": (
-        "One character is wrong, or two are swapped: the last one does not agree. Read the label"
-        " again, or scan it."
-    ),
-    "bad-time": "{value} is no time. Type a date and a time, as 2031-05-04T06:30.",
-    "no-such-local-time": (
-        "No clock showed {local} there: the clocks went forward over it. Give the time after."
-    ),
-    "ambiguous-local-time": (
-        "The clocks showed {local} twice that night. Say whether the first or the second is meant."
-    ),
-}
-"""The sentence of each rule that a time or a code breaks; ``words.py`` merges them."""
-
 AHEAD = timedelta(minutes=2)
 """A stated time may lie this far ahead of the node's clock. Our choice: a watch is set by hand."""
 

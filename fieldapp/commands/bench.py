@@ -44,18 +44,6 @@ Source: filed custody work plans, receipt checklist (trade 4, READ S73, S76, S10
 TAKE_BACK_WITHIN = timedelta(seconds=10)
 """A press may be taken back at least this long, and until the next one (R45)."""
 
-SENTENCES: dict[str, str] = {
-    "reason-missing": "Say why in a few words: a bottle is never held or refused without a reason.",
-    "number-taken": (
-        "Your number {number} stands on bottle {other} already. Look at both stickers, "
-        "then type the number of this one."
-    ),
-    "too-late-to-take-back": (
-        "Another bottle was received since. Record what is right now; "
-        "the earlier entry stays beside it."
-    ),
-}
-
 
 class ReasonMissing(RuleBroken):
     """A bottle is held or refused, or a decision made, without a reason."""

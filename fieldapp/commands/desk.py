@@ -10,23 +10,6 @@ from fieldapp.projections.summaries import text
 
 VOID_WHYS = ("broken", "lost", "misprinted", "replaced", "other")
 
-SENTENCES: dict[str, str] = {
-    "result-stands": (
-        "A result of bottle {bottle} is in already. Whether it is analysed can only be decided "
-        "before any result exists; ask the regulator if a result must not count."
-    ),
-    "not-held": (
-        "Bottle {bottle} is not held at the Bench. Only a held bottle waits for this decision."
-    ),
-    "not-yet-a-finding": (
-        "That is still on its way until {until}. It becomes a finding then if nothing arrives."
-    ),
-    "bottle-in-use": (
-        "Bottle {bottle} was filled or received, so its code cannot be voided. "
-        "Refuse or hold the bottle at the Bench instead."
-    ),
-}
-
 
 class ResultStands(RuleBroken):
     """A result exists; analysis can no longer be decided (R8, R9)."""

@@ -6,10 +6,6 @@ from fieldapp.domain.errors import RuleBroken
 from fieldapp.domain.facts import DeviceEnrolled, DeviceGranted, Fact
 from fieldapp.projections.pages import Pages
 
-SENTENCES = {
-    "no-such-person": "{person} is no person of any round here. Known are: {known}.",
-}
-
 PLACES_OF = {"sampler": "kitchen", "clerk": "bench", "coordinator": "desk"}
 
 

@@ -36,19 +36,6 @@ from fieldapp.domain.protocols.standing import DrawStanding, Standing
 from fieldapp.domain.recorded import Reading
 from fieldapp.domain.timetext import format_utc
 
-SENTENCES = {
-    "wrong-bottle": (
-        "{code} is for draw {draw} at {site}. Draw {wanted} of this visit is due: take its bottle,"
-        " or a spare."
-    ),
-    "already-filled": "{code} was filled already, at {site}, draw {draw}, {filled_at}.",
-    "bottle-void": "{code} was taken out of use ({why}). Take another bottle.",
-    "lot-missing": "Type the lot that is printed on the water for the blank.",
-    "nothing-done": "Say of at least one draw what became of it.",
-    "no-such-draw": "This visit has no draw {draw}.",
-}
-"""The sentence of each rule broken here; ``words.py`` merges them."""
-
 FILLS = ("line", "below", "over", "spilled")
 """How full a bottle is, in one press (R21); the first is the ordinary one."""
 VOID_WHYS = ("broken", "lost", "dirty", "label", "other")

@@ -40,21 +40,6 @@ from fieldapp.domain.protocols.steps import CONSENT
 from fieldapp.domain.recorded import Reading, Recorded
 from fieldapp.domain.timetext import format_utc
 
-SENTENCES = {
-    "strange-deviation": "{deviation} is nothing this device knows. Choose one of those shown.",
-    "name-missing": "Type the name of whoever signs.",
-    "not-yours": "{by} recorded that press. Only the person who made it takes it back.",
-    "taken-back-late": (
-        "Something else was recorded since. This press stays; what is wrong in it is corrected, not"
-        " taken back."
-    ),
-    "bottles-waiting": (
-        "Water stands or runs in this visit: draws {draws} are set and not filled. Say what became"
-        " of them, then close."
-    ),
-}
-"""The sentence of each rule broken here; ``words.py`` merges them."""
-
 LEAVE_WHYS = (
     "waiting",
     "nobody-home",

@@ -16,12 +16,6 @@ from fieldapp.domain.facts import Fact, WaterUsed
 from fieldapp.domain.recorded import Reading
 from fieldapp.domain.timetext import format_utc
 
-SENTENCES = {
-    "crossed-times": "The first time is later than the second. Exchange them.",
-    "nothing-said": "Choose when water last ran, or say that nobody knows.",
-}
-"""The sentence of each rule broken here; ``words.py`` merges them."""
-
 EXACT = ("at", "about", "between", "unknown")
 KNOWN_BY = ("stated", "seen", "metered")
 WHERE = ("this-tap", "kitchen", "bath", "toilet", "laundry", "outside", "elsewhere", "unsaid")

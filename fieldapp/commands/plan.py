@@ -21,14 +21,6 @@ from fieldapp.domain.facts import (
 from fieldapp.domain.protocols import Protocol
 from fieldapp.projections.pages import Pages, Row
 
-SENTENCES = {
-    "round-known": "The round {round} is known and this file differs from it. Look at the "
-    "differences, then import it again with --amend.",
-    "nothing-to-print": "No bottle of route {route} needs a label.",
-    "route-not-here": "This node did not import the round of route {route}, so it issues no codes "
-    "for it. Send and fetch first, or print where the round was imported.",
-}
-
 
 class RoundKnown(RuleBroken):
     """A file of a known round differs from what stands and nobody asked to amend it."""

@@ -8,16 +8,13 @@ from zoneinfo import ZoneInfo
 from flask import g
 
 from fieldapp import words
-from fieldapp.commands import asked, drawing, kitchen
 from fieldapp.commands import last_use as statement
 from fieldapp.domain.errors import RuleBroken
 from fieldapp.domain.protocols.standing import Deviation, Standing
 from fieldapp.domain.recorded import Recorded
 from fieldapp.domain.timetext import Chip
-from fieldapp.web import errors, said, shown
+from fieldapp.web import said, shown
 from fieldapp.words import N_
-
-BROKEN = {**asked.SENTENCES, **kitchen.SENTENCES, **drawing.SENTENCES, **statement.SENTENCES}
 
 WHYS = {
     "waiting": N_("The water must stand longer"),
@@ -174,10 +171,7 @@ PARTS = {
 
 def broken(fault: RuleBroken) -> str:
     """Return the sentence of a rule that a form broke; a kind may have one for each ``why``."""
-    for kind in (f"{fault.kind}-{fault.values.get('why', '')}", fault.kind):
-        if kind in BROKEN:
-            return words.say(BROKEN, kind, _local(fault.values))
-    return errors.sentence(fault)
+    return words.broken(fault.kind, _local(fault.values))
 
 
 def _local(values: Mapping[str, Any]) -> dict[str, Any]:

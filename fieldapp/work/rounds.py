@@ -17,11 +17,6 @@ from fieldapp.reading.difference import Change, difference, to_append
 from fieldapp.reading.rounds import RoundFile, read_round
 from fieldapp.store import Store
 
-SENTENCES = {
-    "taken-elsewhere": "{what} {name} belongs to the round {round} already. Give it an id of its "
-    "own in this file.",
-}
-
 
 class TakenElsewhere(RuleBroken):
     """A route or visit of this file is known under another round."""
