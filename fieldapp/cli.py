@@ -8,6 +8,7 @@ import base64
 import json
 import signal
 import sys
+import threading
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any, NoReturn
@@ -299,7 +300,8 @@ def _routes_of(folder: Path, route: str) -> list[str]:
 
     found = read_round(file.read_bytes(), file.name)
     _stop_at_differences(_import_round(folder, file, False))
-    return [planned.route for planned in found.routes]
+    walked = {visit.route for visit in found.visits}
+    return [planned.route for planned in found.routes if planned.route in walked]
 
 
 def _beside(output: Path, name: str, asked: str) -> Path:
@@ -438,6 +440,7 @@ def rehearse(route: Path | None, as_json: bool, keep: Path | None) -> None:
     """
     from fieldapp.rehearsal import rehearse as walk
 
+    _end_in_order()
     account = walk(route, keep=keep, say=lambda line: click.echo(line, err=True))
     if as_json:
         click.echo(json.dumps(account.as_json(), ensure_ascii=False))
@@ -457,6 +460,7 @@ def demo(keep: Path | None) -> None:
     """
     from fieldapp.rehearsal.demo import show
 
+    _end_in_order()
     sys.exit(show(keep=keep, say=lambda line: click.echo(line)))
 
 
@@ -470,11 +474,18 @@ def _run(store: Any, **options: Any) -> None:
         click.echo(f"{running.url}/")
         sys.stdout.flush()
 
-    def end(_signal: int, _frame: Any) -> NoReturn:
-        raise SystemExit(0)
-
-    signal.signal(signal.SIGTERM, end)
+    _end_in_order(0)
     run_node(store, ready=ready, **options)
+
+
+def _end_in_order(code: int = NO) -> None:
+    """Let SIGTERM end the command as Ctrl-C does: what it opened is closed, its nodes end."""
+
+    def end(_signal: int, _frame: Any) -> NoReturn:
+        raise SystemExit(code)
+
+    if threading.current_thread() is threading.main_thread():
+        signal.signal(signal.SIGTERM, end)
 
 
 def _handed(folder: Path, name: str, asked: dict[str, Any]) -> dict[str, Any]:

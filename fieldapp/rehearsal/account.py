@@ -17,7 +17,10 @@ COUNTED = ("issued", "filled", "received", "refused", "to_analyse", "resulted")
 
 @dataclass(frozen=True)
 class Account:
-    """Counts are bottles at central; ``good`` is what the exit code says."""
+    """Counts are bottles at central; ``good`` is what the exit code says.
+
+    ``stopped`` says that a page or a node failed the walker: what was counted is only a part.
+    """
 
     visits: int
     bottles: dict[str, int]
@@ -27,6 +30,7 @@ class Account:
     ninetieth: dict[str, dict[str, Any]]
     chain: str
     lines: list[str] = field(default_factory=list)
+    stopped: bool = False
 
     @property
     def good(self) -> bool:
@@ -37,6 +41,7 @@ class Account:
             and told["to_analyse"] == told["resulted"]
             and self.chain == "intact"
             and not self.findings
+            and not self.stopped
         )
 
     def as_json(self) -> dict[str, Any]:
@@ -66,7 +71,14 @@ class Account:
         ])  # fmt: skip
 
 
-def account_of(central: Path, tablets: Iterable[Path], round_id: str, lines: list[str]) -> Account:
+def account_of(
+    central: Path,
+    tablets: Iterable[Path],
+    round_id: str,
+    lines: list[str],
+    *,
+    stopped: bool = False,
+) -> Account:
     """Read the closed folders and return the account of that round."""
     chain = "intact"
     for folder in (central, *tablets):
@@ -97,6 +109,7 @@ def account_of(central: Path, tablets: Iterable[Path], round_id: str, lines: lis
             ninetieth=_figures(pages, row, store),
             chain=chain,
             lines=lines,
+            stopped=stopped,
         )
 
 

@@ -35,20 +35,24 @@ class Form:
 
 @dataclass
 class Page:
-    """A page as it was answered."""
+    """A page as it was answered.
+
+    ``says`` is its heading and what it warns of. Only that is told where the walker is in
+    trouble: the rest may hold a resident's name and address (R6).
+    """
 
     url: str
     code: int
     forms: list[Form]
     links: list[dict[str, str]]
     marks: dict[str, str]
-    text: str
+    says: str
 
     def main(self) -> Form | None:
         """Return the form of the way on; nothing where the way on is to wait or to go."""
         found = [form for form in self.forms if "data-main" in form.attributes]
         if len(found) > 1:
-            raise Trouble(f"{self.url} has {len(found)} forms for the way on: {self.text[:300]}")
+            raise Trouble(f"{self.url} has {len(found)} forms for the way on: {self.says}")
         return found[0] if found else None
 
     def main_link(self) -> dict[str, str] | None:
@@ -60,7 +64,7 @@ class Page:
         for form in self.forms:
             if parse.urlsplit(form.action).path.endswith(ending):
                 return form
-        raise Trouble(f"{self.url} has no form for {ending}: {self.text[:300]}")
+        raise Trouble(f"{self.url} has no form for {ending}: {self.says}")
 
 
 class Browser:
@@ -90,7 +94,7 @@ class Browser:
                 return read_page(answer.geturl(), answer.status, answer.read().decode())
         except error.HTTPError as fault:
             page = read_page(url, fault.code, fault.read().decode("utf-8", "replace"))
-            raise Trouble(f"{url} answered {fault.code}: {page.text[:400]}") from fault
+            raise Trouble(f"{url} answered {fault.code}: {page.says}") from fault
         except OSError as fault:
             raise Trouble(f"{url} does not answer: {fault}") from fault
 
@@ -99,7 +103,7 @@ def read_page(url: str, code: int, html: str) -> Page:
     """Return a page's forms, links and marks (``data-*`` anywhere in its main part)."""
     reader = _Reader()
     reader.feed(html)
-    return Page(url, code, reader.forms, reader.links, reader.marks, " ".join(reader.words))
+    return Page(url, code, reader.forms, reader.links, reader.marks, " ".join(reader.loud))
 
 
 class _Reader(HTMLParser):
@@ -108,7 +112,8 @@ class _Reader(HTMLParser):
         self.forms: list[Form] = []
         self.links: list[dict[str, str]] = []
         self.marks: dict[str, str] = {}
-        self.words: list[str] = []
+        self.loud: list[str] = []
+        self._within = ""
         self._form: Form | None = None
         self._select = ""
         self._quiet = 0
@@ -118,6 +123,8 @@ class _Reader(HTMLParser):
         self.marks.update({n: v for n, v in given.items() if n.startswith("data-mark")})
         if tag in ("script", "style", "svg", "head"):
             self._quiet += 1
+        if tag == "h1" or (tag == "p" and _warns(given)):
+            self._within = tag
         if tag == "form":
             self._form = Form(given.get("action", ""), given.get("method", "get"), given)
             self.forms.append(self._form)
@@ -162,6 +169,8 @@ class _Reader(HTMLParser):
                 form.typed.append(name)
 
     def handle_endtag(self, tag: str) -> None:
+        if tag == self._within:
+            self._within = ""
         if tag == "form":
             self._form = None
         elif tag == "select":
@@ -170,5 +179,10 @@ class _Reader(HTMLParser):
             self._quiet -= 1
 
     def handle_data(self, data: str) -> None:
-        if not self._quiet and data.strip():
-            self.words.append(data.strip())
+        if self._within and not self._quiet and data.strip():
+            self.loud.append(data.strip())
+
+
+def _warns(given: dict[str, str]) -> bool:
+    told = given.get("role") == "alert" or "says" in given.get("class", "").split()
+    return told and "hidden" not in given

@@ -54,7 +54,7 @@ class Visit:
                 return until
             self.time.until(until)
             page = self.browser.open(self.path)
-        raise Trouble(f"The visit {self.visit} does not come to an end: {page.text[:300]}")
+        raise Trouble(f"The visit {self.visit} does not come to an end: {page.says}")
 
     def _fill(self, page: Page, form: Form) -> Page:
         ending = urlsplit(form.action).path.rpartition("/")[2]

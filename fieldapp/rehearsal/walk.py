@@ -12,19 +12,23 @@ from collections.abc import Callable, Iterator
 from datetime import datetime, timedelta
 from pathlib import Path
 
-from fieldapp import work
+from fieldapp import identity, work
+from fieldapp.domain.errors import RuleBroken
 from fieldapp.domain.facts import RoutePlanned
 from fieldapp.nodes import become_central
 from fieldapp.places import shipped
 from fieldapp.reading.rounds import RoundFile, read_round
 from fieldapp.rehearsal.account import Account, account_of
-from fieldapp.rehearsal.browser import Browser
+from fieldapp.rehearsal.browser import Browser, Trouble
 from fieldapp.rehearsal.day import Script
 from fieldapp.rehearsal.kitchen import Visit
-from fieldapp.rehearsal.nodes import Process, Time, make_node
+from fieldapp.rehearsal.nodes import NotStarted, Process, Time, make_node
 from fieldapp.rehearsal.script import read_script
 from fieldapp.running import hand_over
 from fieldapp.store import Store
+from fieldapp.work.faults import said_of
+from sync.errors import SyncError, Unsuitable
+from sync.folder import FolderLock
 
 CLEAN_DAY = "clean-day.json"
 TO_THE_LABORATORY = timedelta(hours=2)
@@ -40,8 +44,13 @@ def rehearse(
 
     Args:
         route: The round file; its ``rehearsal`` block says what happens.
-        keep: A folder that keeps ``central`` and ``tablet`` afterwards, closed.
+        keep: A folder that keeps ``central`` and ``tablet`` afterwards, closed; those of an
+            earlier rehearsal make room.
         say: Told what is being done, a line each.
+
+    Raises:
+        BadFile: With every fault of the file; nothing was walked.
+        Unsuitable: ``keep`` holds a folder of that name that no rehearsal made.
     """
     file = route or shipped("demo_routes") / CLEAN_DAY
     data = file.read_bytes()
@@ -54,13 +63,31 @@ def rehearse(
 @contextlib.contextmanager
 def _folder(keep: Path | None) -> Iterator[Path]:
     if keep is not None:
-        for name in ("central", "tablet"):
-            shutil.rmtree(keep / name, ignore_errors=True)
         keep.mkdir(parents=True, exist_ok=True)
+        earlier = [one for one in (keep / "central", *keep.glob("tablet*")) if one.exists()]
+        for folder in earlier:
+            _require_rehearsal(folder)
+        for folder in earlier:
+            shutil.rmtree(folder)
         yield keep
         return
     with tempfile.TemporaryDirectory(prefix="rehearsal-") as name:
         yield Path(name)
+
+
+def _require_rehearsal(folder: Path) -> None:
+    """Let a folder be replaced only where a rehearsal made it and no node holds it: never records.
+
+    Raises:
+        Unsuitable, FolderHeld: Something else lies there, or its node runs.
+    """
+    if not (identity.exists(folder) and identity.read(folder).scripted):
+        raise Unsuitable(
+            f"{folder} is there and no rehearsal made it, so it is left as it is. "
+            "Name another folder for --keep."
+        )
+    with FolderLock(folder):
+        pass
 
 
 class _Walk:
@@ -80,6 +107,7 @@ class _Walk:
         self.codes: Codes = {}
         self.drawn: set[tuple[str, int]] = set()
         self.lines: list[str] = []
+        self.stopped = False
 
     @property
     def central(self) -> Path:
@@ -93,12 +121,20 @@ class _Walk:
             day = datetime.fromisoformat(first.day).date()
             self.time.begin(self.script.begins_at(day, self.time.zone) - timedelta(minutes=20))
         self._plan()
-        with Process("central", self.central) as central:
-            for sampler, folder in tablets.items():
-                self._day_of(sampler, folder, central.url)
-            self._receive(central.url)
-            self._results()
-        return account_of(self.central, tablets.values(), self.planned.round.round, self.lines)
+        try:
+            with Process("central", self.central) as central:
+                for sampler, folder in tablets.items():
+                    self._day_of(sampler, folder, central.url)
+                self._receive(central.url)
+                self._results()
+        except (Trouble, NotStarted, RuleBroken, SyncError) as fault:
+            # what was recorded up to here is counted all the same
+            self._tell(f"Stopped: {' '.join(said_of(fault)['lines'])}")
+            self.stopped = True
+        walked = [folder for folder in tablets.values() if identity.exists(folder)]
+        return account_of(
+            self.central, walked, self.planned.round.round, self.lines, stopped=self.stopped
+        )
 
     def _tablets(self) -> dict[str, Path]:
         """Return a folder for each sampler, ``tablet`` for the first."""
