@@ -115,6 +115,16 @@ def tables_in(db: sqlite3.Connection) -> dict[str, list[tuple[Any, ...]]]:
     }
 
 
+def everything(store: Store) -> dict[str, list[tuple[Any, ...]]]:
+    """Return every row of every table, for a look before and after."""
+    with store.reader() as db:
+        names = db.execute("SELECT name FROM sqlite_master WHERE type = 'table' ORDER BY 1")
+        return {
+            name: sorted(db.execute(f"SELECT * FROM {name}"), key=repr)
+            for (name,) in names.fetchall()
+        }
+
+
 def count(store: Store) -> int:
     """Return how many entries are held whole."""
     with store.reader() as db:

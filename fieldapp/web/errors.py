@@ -4,7 +4,7 @@ import sqlite3
 from http import HTTPStatus
 
 from flask import Flask, flash, g, jsonify, redirect, render_template, request, url_for
-from werkzeug.exceptions import HTTPException
+from werkzeug.exceptions import HTTPException, SecurityError
 from werkzeug.wrappers import Response
 
 from fieldapp import words
@@ -73,6 +73,10 @@ def http_fault(fault: HTTPException) -> Response | tuple[str, int]:
         403: words.gettext("This page answers only to this machine."),
     }
     says = known.get(code, words.gettext("That did not work. Go back and try once more."))
+    if isinstance(
+        request.routing_exception, SecurityError
+    ):  # under another name no address of ours can be built
+        return Response(known[403], status=code, mimetype="text/plain")
     if wants_json():
         return _json(says, code, "http")
     return page(says, code)

@@ -133,7 +133,7 @@ def answer(visit: str) -> Answer:
     """Record an answer; consent is a fact of its own."""
     form = load(forms.AnswerForm)
     if form["question"] == CONSENT:
-        how = "refused" if form["answer"] == "refused" else "spoken"
+        how = "spoken" if form["answer"] == "agreed" else form["answer"]
         return act_timed(
             visit, lambda p, r, when: kitchen.agree(p, r, visit, how=how, when=when), form
         )
@@ -218,7 +218,7 @@ def blank(visit: str) -> Answer:
 def state_deviation(visit: str) -> Answer:
     """Record what was different."""
     form = load(forms.DifferentForm)
-    draws = [int(one) for one in request.form.getlist("draws") if one.isdigit()]
+    draws = [int(one) for one in request.form.getlist("draws") if one.isdecimal()]
     return act_timed(
         visit,
         lambda p, r, when: kitchen.state_deviation(

@@ -9,6 +9,7 @@ from marshmallow import Schema, ValidationError, fields, validate, validates
 from fieldapp.commands import drawing, kitchen, last_use
 from fieldapp.commands.asked import NOW, When, stated_at
 from fieldapp.domain.timetext import to_utc
+from fieldapp.web.context import BadForm
 
 LOCAL = validate.Regexp(
     r"^$|^\d{4}-\d\d-\d\dT\d\d:\d\d(:\d\d)?$", error="Type a date and a time, as 2031-05-04T06:30."
@@ -177,12 +178,14 @@ def drawn_of(sent: Mapping[str, str], draws: tuple[int, ...]) -> dict[int, drawi
     found = {}
     for draw in draws:
         fill = sent.get(f"fill_{draw}", sent.get("fill", "line"))
-        millilitres = sent.get(f"ml_{draw}", "") or "0"
+        millilitres = sent.get(f"ml_{draw}", "").strip() or "0"
+        if not millilitres.isdecimal() or int(millilitres) > MOST_ML:
+            raise BadForm({f"ml_{draw}": ["Give whole millilitres, or nothing."]})
         found[draw] = drawing.Drawn(
             draw=draw,
             code=sent.get(f"code_{draw}", ""),
             fill=fill,
-            volume_ml=int(millilitres) if millilitres.isdigit() else 0,
+            volume_ml=int(millilitres),
             water_lot=sent.get("water_lot", ""),
         )
     return found
