@@ -1,17 +1,26 @@
 """The whole way of a round: the shipped day, and days on which one thing is otherwise."""
 
+import contextlib
 import json
+import re
 import sqlite3
+import subprocess
+import sys
 import tempfile
+from collections.abc import Iterable, Iterator, Mapping
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
+from urllib import request
 from zoneinfo import ZoneInfo
 
 import numpy
 import pytest
 
+from fieldapp.rehearsal import kitchen
+from fieldapp.store import Store
 from sync.folder import FolderLock
+from tests import nodes
 from tests.journeys import walks
 from tests.journeys.conftest import Kept
 
@@ -156,14 +165,19 @@ def test_a_filter_in_the_way_ends_the_visit_and_its_bottle_stays_empty(tmp_path:
 
 
 def test_a_bottle_with_a_deviation_is_held_and_counts_as_received(tmp_path: Path) -> None:
+    """It is kept where an earlier rehearsal was, which makes room."""
+
     def change(plan: Plan) -> None:
         walks.script_of(plan, "V-0401")["answers"] = {"aerator": "cleaned"}
 
     keep = tmp_path / "kept"
+    for name in ("central", "tablet-2"):
+        walks.rehearsals_node(keep / name)
     walked = walks.rehearse(walks.short(tmp_path, ["V-0401"], change), "--keep", str(keep))
     held = one_column(keep / "central" / "ledger.db", "SELECT outcome FROM p_bottle")
     assert held == ["held"]
     assert walked.bottles == counts(issued=1, filled=1, received=1, to_analyse=1, resulted=1)
+    assert sorted(path.name for path in keep.iterdir()) == ["central", "tablet"]
 
 
 def test_two_samplers_and_two_days_take_two_tablets_and_one_central(tmp_path: Path) -> None:
@@ -225,6 +239,88 @@ def test_a_day_without_a_script_is_walked_as_expected_and_lacks_results(tmp_path
     assert walked.kinds == []
 
 
+def test_every_answer_has_its_way_to_the_end_of_the_visit(tmp_path: Path) -> None:
+    """A visit for each answer and each kind of last use; none leaves the walker standing."""
+    plan = odd_days()
+    keep = tmp_path / "kept"
+    walked = walks.rehearse(walks.written(tmp_path, plan), "--keep", str(keep))
+    assert "Stopped" not in walked.err
+    assert walked.account["visits"] == len(ODD_ANSWERS) + len(ODD_USES)
+    central = keep / "central" / "ledger.db"
+    ended = dict(rows(central, "SELECT visit, outcome FROM p_visit"))
+    filled = dict(rows(central, "SELECT visit, MIN(filled) FROM p_bottle GROUP BY visit"))
+    received = dict(rows(central, "SELECT visit, MIN(outcome) FROM p_bottle GROUP BY visit"))
+    assert {
+        answer: (ended[visit], filled[visit], received[visit])
+        for visit, answer in zip(sorted(ended), (*ODD_ANSWERS, *ODD_USES), strict=True)
+    } == {**ODD_ANSWERS, **{name: expected for name, (_, expected) in ODD_USES.items()}}
+
+
+def test_a_page_that_fails_the_walker_stops_it_with_what_was_counted_and_no_private_text(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(kitchen, "MOST_PAGES", 5)
+    walked = walks.rehearse(walks.short(tmp_path, ["V-0401"], lambda plan: None))
+    assert walked.code == 1
+    assert walked.bottles == counts(issued=1, to_analyse=1)
+    (line,) = [one for one in walked.err.splitlines() if one.startswith("Stopped: ")]
+    assert "V-0401 does not come to an end" in line
+    assert "Oddmarrow" not in walked.err
+    assert "Quarrelow" not in walked.err
+
+
+def test_a_folder_that_no_rehearsal_made_is_never_replaced(tmp_path: Path) -> None:
+    """A real central may lie where somebody keeps a rehearsal."""
+    keep = tmp_path / "kept"
+    with Store.open(keep / "central") as store:
+        nodes.import_shipped(store)
+    before = bytes_of(keep)
+    walked = walks.rehearse(
+        walks.short(tmp_path, ["V-0401"], lambda plan: None), "--keep", str(keep)
+    )
+    assert (walked.code, walked.out) == (1, "")
+    assert "--keep" in walked.err
+    assert bytes_of(keep) == before
+
+
+# ended from outside
+
+
+def test_a_rehearsal_that_is_told_to_end_ends_its_nodes_too(tmp_path: Path) -> None:
+    home, spare, keep = (tmp_path / name for name in ("home", "spare", "kept"))
+    home.mkdir()
+    spare.mkdir()
+    with started("rehearse", "--keep", str(keep), env=walks.bare(home, spare)) as process:
+        assert process.stderr is not None
+        next(line for line in process.stderr if line.startswith("Kitchen tablet: enrolled"))
+        process.terminate()
+        assert process.wait(60) == 1
+    for name in ("central", "tablet"):
+        with FolderLock(keep / name):
+            pass
+        assert not (keep / name / "ledger.db-wal").exists()
+
+
+def test_the_demo_serves_its_pages_until_it_is_told_to_end(tmp_path: Path) -> None:
+    home, spare, keep = (tmp_path / name for name in ("home", "spare", "kept"))
+    home.mkdir()
+    spare.mkdir()
+    with started("demo", "--keep", str(keep), env=walks.bare(home, spare)) as process:
+        assert process.stdout is not None
+        lines = list(until(process.stdout, "Ctrl-C ends both"))
+        addresses = [found[0] for line in lines if (found := re.findall(r"http://\S+", line))]
+        assert len(addresses) == 2
+        desk, people = (raw(address, path) for address, path in zip(addresses, PAGES, strict=True))
+        assert nodes.ROUND in desk
+        assert "Wrenna Oddquist" in people
+        process.terminate()
+        assert process.wait(60) == 0
+    for name in ("central", "tablet"):
+        with FolderLock(keep / name):
+            pass
+    assert list(spare.iterdir()) == []
+
+
 def test_a_file_with_faults_says_all_of_them_and_walks_nothing(tmp_path: Path) -> None:
     def change(plan: Plan) -> None:
         plan["round"]["zone"] = "Moon/Crater"
@@ -251,6 +347,98 @@ def test_a_script_with_faults_says_all_of_them_and_walks_nothing(tmp_path: Path)
 
 
 # what the tests stand on
+
+
+ODD_ANSWERS: dict[tuple[str, str], tuple[str, int, str]] = {
+    ("consent", "refused"): ("refused", 0, ""),
+    ("tap", "hot"): ("done", 1, "held"),
+    ("tap", "not-drinking"): ("unfit", 0, ""),
+    ("filter", "bypassed"): ("done", 1, "accepted"),
+    ("filter", "filter"): ("unfit", 0, ""),
+    ("filter", "softener"): ("unfit", 0, ""),
+    ("aerator", "cleaned"): ("done", 1, "held"),
+    ("aerator", "removed"): ("done", 1, "held"),
+    ("plumbing-work", "recent"): ("done", 1, "held"),
+    ("plumbing-work", "not-known"): ("done", 1, "accepted"),
+}
+"""An answer to a question of the pair, and how its visit ends: outcome, filled, receipt."""
+
+ODD_USES: dict[str, tuple[Plan, tuple[str, int, str]]] = {
+    "too short, and away meanwhile": (
+        {
+            "waits": "away",
+            "last_use": {"hours_before": "3", "exact": "at", "where": "bath"},
+        },
+        ("done", 1, "accepted"),
+    ),
+    "unknown, and over the line": (
+        {"last_use": {"exact": "unknown", "where": "this-tap"}, "fill": {"1": "over"}},
+        ("done", 1, "held"),
+    ),
+    "too long": (
+        {"last_use": {"hours_before": "30", "exact": "about", "where": "this-tap"}},
+        ("done", 1, "held"),
+    ),
+    "between, and below the line": (
+        {
+            "last_use": {"at": "21:00", "to": "22:00", "exact": "between", "where": "bath"},
+            "fill": {"1": "below"},
+        },
+        ("done", 1, "held"),
+    ),
+}
+
+
+def odd_days() -> Plan:
+    """Return a round of one site a visit: pairs for the answers, first litres for the last uses."""
+    plan = walks.shipped_plan()
+    site = plan["sites"].pop(0)
+    odd = [("first-and-fifth", (1, 5), {"answers": {q: a}}) for q, a in ODD_ANSWERS]
+    odd += [("first-litre", (1,), script) for script, _ in ODD_USES.values()]
+    plan["sites"] = [{**site, "id": f"S-{n:02}"} for n in range(len(odd))]
+    plan["routes"][0]["visits"] = [
+        {
+            "id": f"V-{n:02}", "site": f"S-{n:02}", "protocol": protocol,
+            "draws": [{"draw": draw, "purpose": "investigation"} for draw in draws],
+        }
+        for n, (protocol, draws, _) in enumerate(odd)
+    ]  # fmt: skip
+    visits = [{"id": f"V-{n:02}", **script} for n, (_, _, script) in enumerate(odd)]
+    plan["rehearsal"] = {"visits": visits}
+    return plan
+
+
+@contextlib.contextmanager
+def started(*words: str, env: Mapping[str, str]) -> Iterator[subprocess.Popen[str]]:
+    """Start a command in a process of its own, which ends with the block at the latest."""
+    whole = [sys.executable, "-m", "fieldapp.cli", *words]
+    pipes = {"stdin": subprocess.DEVNULL, "stdout": subprocess.PIPE, "stderr": subprocess.PIPE}
+    with subprocess.Popen(whole, env=env, text=True, **pipes) as process:  # type: ignore[call-overload]
+        try:
+            yield process
+        finally:
+            if process.poll() is None:
+                process.kill()
+
+
+PAGES = ("desk/", "")
+"""A page of central, and the first page of the tablet."""
+
+
+def raw(address: str, path: str) -> str:
+    """Return a page as it was sent."""
+    opener = request.build_opener(request.ProxyHandler({}))
+    with opener.open(address + path, timeout=30) as answer:
+        return str(answer.read().decode())
+
+
+def until(lines: Iterable[str], piece: str) -> Iterator[str]:
+    """Yield lines up to the one that holds the piece."""
+    for line in lines:
+        yield line
+        if piece in line:
+            return
+    raise AssertionError(f"no line says {piece}")
 
 
 def counts(**given: int) -> dict[str, int]:
@@ -321,7 +509,11 @@ def bytes_of(folder: Path) -> dict[str, bytes]:
 
 def one_column(database: Path, asked: str, *values: Any) -> list[Any]:
     """Return the first column of what a closed database answers."""
-    with sqlite3.connect(f"{database.resolve().as_uri()}?mode=ro&immutable=1", uri=True) as db:
-        found = [row[0] for row in db.execute(asked, values)]
-    db.close()
-    return found
+    return [row[0] for row in rows(database, asked, *values)]
+
+
+def rows(database: Path, asked: str, *values: Any) -> list[tuple[Any, ...]]:
+    """Return what a closed database answers, and change no byte of it."""
+    uri = f"{database.resolve().as_uri()}?mode=ro&immutable=1"
+    with contextlib.closing(sqlite3.connect(uri, uri=True)) as db:
+        return list(db.execute(asked, values))

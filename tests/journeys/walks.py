@@ -13,6 +13,8 @@ from typing import Any
 from click.testing import CliRunner, Result
 
 from fieldapp.cli import main
+from fieldapp.clock import write_script
+from fieldapp.store import Store
 from tests.nodes import SHIPPED
 
 KEYS = ["visits", "bottles", "entries", "photos", "findings", "ninetieth", "chain"]
@@ -78,6 +80,13 @@ def rehearse(file: Path, *more: str) -> Walked:
     """Rehearse a route file; its nodes are processes, the walker is this one."""
     done = command("rehearse", str(file), "--json", *more)
     return Walked(done.exit_code, done.stdout, done.stderr)
+
+
+def rehearsals_node(folder: Path) -> None:
+    """Make a rehearsal's empty node, as an earlier rehearsal left one."""
+    folder.mkdir(parents=True)
+    write_script(folder, 0)
+    Store.open(folder, scripted=True).close()
 
 
 def shipped_plan() -> dict[str, Any]:
