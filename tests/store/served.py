@@ -20,8 +20,18 @@ class Served:
     """A folder's node, run as a person runs it."""
 
     def __init__(self, folder: Path, module: str = "fieldapp.cli") -> None:
+        self._start([module, "serve", "--data", str(folder)])
+
+    @classmethod
+    def of(cls, command: list[str]) -> "Served":
+        """Return what another module serves, started with those words."""
+        made = cls.__new__(cls)
+        made._start(command)
+        return made
+
+    def _start(self, command: list[str]) -> None:
         self.process = subprocess.Popen(
-            [sys.executable, "-m", module, "serve", "--data", str(folder)],
+            [sys.executable, "-m", *command],
             stdin=subprocess.DEVNULL, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL,
             env={**os.environ, "PYTHONPATH": str(CHECKOUT)}, text=True,
         )  # fmt: skip

@@ -36,7 +36,7 @@ REACH = {
     # what a route needs or yields, and no laboratory
     **dict.fromkeys(
         ("site.listed", "site.dropped", "route.planned", "visit.opened", "visit.left",
-         "visit.resumed", "occupant.agreed", "visit.signed"),
+         "visit.resumed", "occupant.agreed", "visit.signed", "photo.taken"),
         ON_THE_ROUTE,
     ),
     # what a laboratory has to know of a bottle before it pours
@@ -44,7 +44,9 @@ REACH = {
         ("visit.planned", "bottle.issued", "labels.printed", "bottle.voided", "water.used",
          "question.answered", "stand.started", "run.started", "run.ended", "bottle.set",
          "tap.opened", "tap.closed", "bottle.filled", "draw.poured", "deviation.stated",
-         "visit.closed", "bottle.received", "analysis.decided"),
+         "visit.closed", "bottle.received", "analysis.decided", "crate.counted",
+         "bottle.located", "bottle.packed", "cooler.sealed", "cooler.reopened", "cooler.opened",
+         "handover.offered", "handover.stated", "receipt.stated"),
         AND_AT_THE_LABORATORY,
     ),
     # answers, settlements, results: of central alone
@@ -63,7 +65,7 @@ def one_of(kind: str, code: str) -> facts.Fact:
     hints = typing.get_type_hints(cls)
     known = {
         "round": ROUND, "route": ROUTE, "visit": VISIT, "site": SITE, "bottle": code,
-        "laboratory": LABORATORY,
+        "laboratory": LABORATORY, "cooler": "C-1",
     }  # fmt: skip
     given: dict[str, object] = {}
     for field in dataclasses.fields(cls):
@@ -248,6 +250,7 @@ def test_every_kind_of_fact_has_its_reach_in_this_table():
 
 @pytest.mark.parametrize("kind", [kind for kind, reach in REACH.items() if reach is not None])
 def test_a_fact_goes_where_its_kind_may_go_and_nowhere_else(planned, codes, kind):
+    press(planned, facts.BottlePacked(bottle=codes[0], cooler="C-1", route=ROUTE))
     with planned.pages() as pages:
         assert scope_of(pages, one_of(kind, codes[0])) == REACH[kind]
 
