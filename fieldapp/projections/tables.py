@@ -8,8 +8,6 @@ dropped and rebuilt.
 
 import sqlite3
 
-from sqlite_utils import Database
-
 VERSION = 2
 """Raise it when a summary changes; a node with older page tables rebuilds them at start."""
 
@@ -179,6 +177,8 @@ INDEXES: dict[str, tuple[tuple[str, ...], ...]] = {
 
 def make_tables(db: sqlite3.Connection) -> None:
     """Make the page tables that are not there yet, inside the caller's transaction."""
+    from sqlite_utils import Database  # a tenth of a start, which makes no tables as a rule
+
     tables = Database(db)
     for name, (columns, key) in TABLES.items():
         tables[name].create(columns, pk=key, strict=True, if_not_exists=True)
