@@ -553,8 +553,9 @@ def test_a_changed_entry_is_exit_1_with_its_log_and_number(desk: Path) -> None:
     done = command("verify", "--data", desk)
     assert (done.exit_code, done.stdout) == (1, "")
     assert done.stderr.startswith(f"log {log}, entry {seq}: ")
-    report = json.loads(command("verify", "--json", "--data", desk).stdout)
-    assert report["chain"] == "broken"
+    told = command("verify", "--json", "--data", desk)
+    report = json.loads(told.stdout)
+    assert (told.exit_code, report["chain"]) == (1, "broken")
     assert (report["first_fault"]["log"], report["first_fault"]["seq"]) == (log, seq)
 
 

@@ -3,11 +3,13 @@
 import contextlib
 import json
 import re
+import shutil
 import sqlite3
 import subprocess
 import sys
 import tempfile
 from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import replace
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
@@ -18,6 +20,7 @@ import numpy
 import pytest
 
 from fieldapp.rehearsal import kitchen
+from fieldapp.rehearsal.account import Account, account_of
 from fieldapp.store import Store
 from sync.folder import FolderLock
 from tests import nodes
@@ -126,6 +129,46 @@ def test_the_nodes_of_a_rehearsal_say_that_their_clock_is_scripted(kept: Kept) -
         asked = "SELECT data FROM p_fact WHERE kind = 'log.opened'"
         opened = [json.loads(text) for text in one_column(folder / "ledger.db", asked)]
         assert {data["clock"] for data in opened} == {"scripted"}
+
+
+# what good means
+
+
+GOOD = Account(
+    visits=7, bottles=ALL_NINE, entries=159, photos=0, findings=[], ninetieth={}, chain="intact"
+)  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    ("what", "found"),
+    [
+        ("bottles", {**ALL_NINE, "filled": 8}),
+        ("bottles", {**ALL_NINE, "received": 8}),
+        ("bottles", {**ALL_NINE, "issued": 10}),
+        ("bottles", {**ALL_NINE, "resulted": 8}),
+        ("findings", [{"kind": "void-but-filled", "about": "bottle:F8QY40YGEC9", "says": "…"}]),
+        ("chain", "broken"),
+        ("stopped", True),
+    ],
+)
+def test_one_thing_open_is_enough_for_exit_1(what: str, found: object) -> None:
+    assert GOOD.good
+    assert not replace(GOOD, **{what: found}).good
+
+
+@pytest.mark.parametrize("name", ["central", "tablet"])
+def test_a_chain_that_is_broken_at_either_end_is_told(
+    kept: Kept, name: str, tmp_path: Path
+) -> None:
+    nodes_of = {one: Path(shutil.copytree(kept.nodes[one], tmp_path / one)) for one in kept.nodes}
+    with contextlib.closing(sqlite3.connect(nodes_of[name] / "ledger.db")) as db, db:
+        db.execute("DROP TRIGGER entry_never_update")
+        db.execute("UPDATE entry SET sig = zeroblob(64) WHERE seq = 5")
+    lines: list[str] = []
+    account = account_of(nodes_of["central"], [nodes_of["tablet"]], nodes.ROUND, lines)
+    assert account.chain == "broken"
+    assert account.bottles == ALL_NINE, "the counts are told as they stand"
+    assert [line for line in lines if line.startswith(f"{name}: ")]
 
 
 # days on which one thing is otherwise
