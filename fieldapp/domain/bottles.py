@@ -8,11 +8,14 @@ from fieldapp.domain.facts import (
     AnalysisDecided,
     BottleFilled,
     BottleIssued,
+    BottleLocated,
+    BottlePacked,
     BottleReceived,
     BottleSet,
     BottleVoided,
     Fact,
     LabelsPrinted,
+    ReceiptStated,
     ResultReported,
 )
 from fieldapp.domain.recorded import Recorded
@@ -28,7 +31,10 @@ class BottleStanding:
     voided: Recorded | None = None
     sets: tuple[Recorded, ...] = ()
     fillings: tuple[Recorded, ...] = ()
+    packings: tuple[Recorded, ...] = ()
+    located: tuple[Recorded, ...] = ()
     receipts: tuple[Recorded, ...] = ()
+    stated: tuple[Recorded, ...] = ()
     decisions: tuple[Recorded, ...] = ()
     results: dict[str, tuple[Recorded, ...]] = field(default_factory=dict)
 
@@ -87,6 +93,31 @@ class BottleStanding:
         return self.fillings[-1].done_at if self.fillings else None
 
     @property
+    def cooler(self) -> str:
+        """The cooler it was last packed into, empty for none."""
+        return _named(self.packings[-1].fact, "cooler") if self.packings else ""
+
+    @property
+    def whereabouts(self) -> str:
+        """Where somebody says that it is, if nobody packed it since; a kind, else empty."""
+        if not self.located:
+            return ""
+        last = in_order((*self.packings, *self.located))[-1]
+        return _named(last.fact, "how")
+
+    @property
+    def arrived(self) -> bool:
+        """The laboratory has it, by its own record or by a statement at the Desk (R12)."""
+        return bool(self.receipts or self.stated)
+
+    @property
+    def numbers(self) -> tuple[str, ...]:
+        """The laboratory's numbers it was received under, each once, the latest last."""
+        given = [_named(one.fact, "laboratory_number") for one in self.receipts]
+        said = [str(getattr(one.fact, "numbers", {}).get(self.bottle, "")) for one in self.stated]
+        return tuple(dict.fromkeys(number for number in (*said, *given) if number))
+
+    @property
     def receipt(self) -> BottleReceived | None:
         """The laboratory's latest act on it."""
         found = self.receipts[-1].fact if self.receipts else None
@@ -114,7 +145,10 @@ def tell(bottle: str, recorded: Iterable[Recorded]) -> BottleStanding:
         voided=voids[-1] if voids else None,
         sets=_of(ordered, BottleSet),
         fillings=_of(ordered, BottleFilled),
+        packings=_of(ordered, BottlePacked),
+        located=_of(ordered, BottleLocated),
         receipts=_of(ordered, BottleReceived),
+        stated=_of(ordered, ReceiptStated),
         decisions=_of(ordered, AnalysisDecided),
         results={analyte: tuple(found) for analyte, found in results.items()},
     )

@@ -15,7 +15,7 @@ from fieldapp.projections import facts, summaries
 Row = Mapping[str, Any]
 _JSON = (
     "months", "protocols", "roles", "places", "analyse", "deviations", "results", "says",
-    "evidence",
+    "evidence", "seals", "broken", "bottles", "seal_read", "missing",
 )  # fmt: skip
 
 

@@ -6,7 +6,7 @@ import json
 import sqlite3
 from collections.abc import Callable, Iterable
 from dataclasses import asdict
-from datetime import datetime, timedelta
+from datetime import datetime
 
 from fieldapp.domain import reconcile
 from fieldapp.domain.bottles import BottleStanding, in_order, tell
@@ -26,7 +26,13 @@ from fieldapp.domain.protocols import BadProtocol, Protocol, read_protocol
 from fieldapp.domain.protocols.standing import Standing
 from fieldapp.domain.protocols.where import where
 from fieldapp.domain.recorded import Reading, Recorded
-from fieldapp.domain.timetext import parse_duration
+from fieldapp.projections.custody import (
+    absent_from,
+    boxes_of,
+    coolers_beside,
+    due_of,
+    tell_cooler,
+)
 from fieldapp.projections.facts import LIVING, about, living, one
 from fieldapp.projections.findings import write_findings
 from fieldapp.projections.tables import put
@@ -35,12 +41,16 @@ _protocols: dict[str, Protocol] = {}
 
 
 def refresh(db: sqlite3.Connection, subjects: Iterable[str]) -> None:
-    """Tell those subjects anew, and what hangs on them: a visit's bottles, a bottle's visits."""
+    """Tell those subjects anew, and what hangs on them.
+
+    A visit's bottles, a bottle's visits and coolers; of a cooler that comes to be known empty, the
+    bottles that did not come out of it.
+    """
     told = set(subjects)
-    wanted = _widened(db, told | _hanging(db, told))
+    wanted = _widened(db, told | _hanging(db, told)) | coolers_beside(db, told)
     for what in ORDER:
         for subject in sorted(s for s in wanted if s.startswith(f"{what}:")):
-            ORDER[what](db, subject.partition(":")[2])
+            wanted |= ORDER[what](db, subject.partition(":")[2]) or set()
 
 
 def _hanging(db: sqlite3.Connection, subjects: set[str]) -> set[str]:
@@ -250,15 +260,15 @@ def tell_bottle(db: sqlite3.Connection, bottle: str) -> None:
     row = _bottle_row(db, told)
     put(db, "p_bottle", row)
     db.execute("DELETE FROM p_number WHERE bottle = ?", (bottle,))
-    for entry in told.receipts:
-        number = str(getattr(entry.fact, "laboratory_number", ""))
-        if number:
-            put(db, "p_number", {"laboratory_number": number, "bottle": bottle})
+    for number in told.numbers:
+        put(db, "p_number", {"laboratory_number": number, "bottle": bottle})
     closed = living(about(db, f"visit:{told.visit}", ("visit.closed",)), "visit.closed")
     found = reconcile.about_bottle(
         told,
-        due=_due(db, str(row["round"])),
+        due=due_of(db, str(row["round"])),
         visit_closed=closed[-1] if closed else None,
+        missing_at=absent_from(db, told.filled_at, told.cooler, str(row["route"])),
+        boxes=boxes_of(db, _coolers_of(told)),
     )
     write_findings(db, f"bottle:{bottle}", str(row["round"]), str(row["site"]), found)
 
@@ -288,14 +298,29 @@ def _bottle_row(db: sqlite3.Connection, told: BottleStanding) -> dict[str, objec
         "filled_at": text(told.filled_at) if told.filled_at else "",
         "filled": int(bool(told.fillings)),
         "fill": str(getattr(told.fillings[-1].fact, "fill", "")) if told.fillings else "",
-        "received_at": text(told.receipts[-1].done_at) if told.receipts else "",
-        "outcome": receipt.outcome if receipt else "",
-        "laboratory_number": receipt.laboratory_number if receipt else "",
+        **_received(told),
+        "cooler": told.cooler, "located": told.whereabouts,
         "decided": "" if decided is None else ("analyse" if decided.analyse else "leave"),
         "results": json.dumps(_results(told)),
         "resulted": int(to_analyse and set(analyse) <= set(told.results)),
         "to_analyse": int(to_analyse),
     }  # fmt: skip
+
+
+def _received(told: BottleStanding) -> dict[str, object]:
+    """Return the receipt that stands: the laboratory's own, else the one stated at the Desk (R12).
+
+    What a laboratory says that it received counts as accepted.
+    """
+    came = told.receipts or told.stated
+    stated = "accepted" if told.stated else ""
+    number = told.receipt.laboratory_number if told.receipt else ""
+    return {
+        "received_at": text(came[-1].done_at) if came else "",
+        "outcome": told.receipt.outcome if told.receipt else stated,
+        "laboratory_number": number or (told.numbers[-1] if told.numbers else ""),
+        "receipt_basis": "stated" if came and not told.receipts else "",
+    }
 
 
 def _draw_of(db: sqlite3.Connection, told: BottleStanding, sha256: str) -> tuple[int, list[str]]:
@@ -338,9 +363,10 @@ def tell_entry(db: sqlite3.Connection, of: str) -> None:
     write_findings(db, f"entry:{of}", "", "", reconcile.corrected_twice(of, corrections))
 
 
-def _due(db: sqlite3.Connection, round_id: str) -> timedelta | None:
-    row = db.execute("SELECT due FROM p_round WHERE round = ?", (round_id,)).fetchone()
-    return parse_duration(row[0]) if row and row[0] else None
+def _coolers_of(told: BottleStanding) -> list[str]:
+    """Return the coolers that packings and receipts of a bottle name."""
+    named = (getattr(one.fact, "cooler", "") for one in (*told.packings, *told.receipts))
+    return sorted({str(cooler) for cooler in named if cooler})
 
 
 def _priv(db: sqlite3.Connection, name: str) -> bytes:
@@ -359,7 +385,7 @@ def key_name(public_key: str) -> str:
     return base64.urlsafe_b64encode(hashlib.sha256(raw).digest()[:8]).rstrip(b"=").decode()
 
 
-ORDER: dict[str, Callable[[sqlite3.Connection, str], None]] = {
+ORDER: dict[str, Callable[[sqlite3.Connection, str], set[str] | None]] = {
     "round": tell_round,
     "protocol": tell_protocol,
     "person": tell_person,
@@ -367,6 +393,7 @@ ORDER: dict[str, Callable[[sqlite3.Connection, str], None]] = {
     "route": tell_route,
     "site": tell_site,
     "visit": tell_visit,
+    "cooler": tell_cooler,
     "bottle": tell_bottle,
     "entry": tell_entry,
     "finding": tell_finding,

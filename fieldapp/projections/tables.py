@@ -8,7 +8,7 @@ dropped and rebuilt.
 
 import sqlite3
 
-VERSION = 2
+VERSION = 3
 """Raise it when a summary changes; a node with older page tables rebuilds them at start."""
 
 TEXT, INT, BLOB = str, int, bytes
@@ -143,8 +143,43 @@ TABLES: dict[str, tuple[dict[str, type], str | tuple[str, ...]]] = {
             "results": TEXT,
             "resulted": INT,
             "to_analyse": INT,
+            "cooler": TEXT,
+            "located": TEXT,
+            "receipt_basis": TEXT,
         },
         "bottle",
+    ),
+    "p_cooler": (
+        {
+            "cooler": TEXT,
+            "round": TEXT,
+            "route": TEXT,
+            "day": TEXT,
+            "box": TEXT,
+            "state": TEXT,
+            "seals": TEXT,
+            "broken": TEXT,
+            "bottles": TEXT,
+            "packed": INT,
+            "count": INT,
+            "set_hash": TEXT,
+            "packed_at": TEXT,
+            "sealed_at": TEXT,
+            "last_sealed_at": TEXT,
+            "relinquished_at": TEXT,
+            "handed_to": TEXT,
+            "waybill": TEXT,
+            "opened_at": TEXT,
+            "whole": INT,
+            "seal_read": TEXT,
+            "counted": INT,
+            "received": INT,
+            "missing": TEXT,
+            "stated_at": TEXT,
+            "stated_on": TEXT,
+            "emptied_at": TEXT,
+        },
+        "cooler",
     ),
     "p_number": ({"laboratory_number": TEXT, "bottle": TEXT}, ("laboratory_number", "bottle")),
     "p_finding": (
@@ -168,7 +203,8 @@ INDEXES: dict[str, tuple[tuple[str, ...], ...]] = {
     "p_fact": (("kind",), ("log", "seq"), ("replaces",)),
     "p_gone": (("by_hash",),),
     "p_visit": (("route",), ("round",), ("site",)),
-    "p_bottle": (("round",), ("visit",), ("route",)),
+    "p_bottle": (("round",), ("visit",), ("route",), ("cooler",)),
+    "p_cooler": (("route",), ("round",)),
     "p_finding": (("round",), ("subject",)),
     "p_device": (("person",),),
     "p_protocol": (("protocol",),),

@@ -37,6 +37,8 @@ VOCABULARY: dict[tuple[str, str], tuple[str, ...]] = {
     ("result.reported", "unit"): ("ug/L", "mg/L"),
     ("bottle.set", "held"): ("known", "unknown"),
     ("occupant.agreed", "how"): ("spoken", "signed", "refused"),
+    ("bottle.located", "how"): ("with-me", "left-behind", "broken", "elsewhere"),
+    ("handover.offered", "to"): ("laboratory", "courier", "night-box", "colleague"),
 }
 _BY_NAME: dict[str, Any] = {
     "bottle": CODE, "done_at": UTC_TEXT, "learned_at": UTC_TEXT, "day": DAY, "value": DECIMAL,

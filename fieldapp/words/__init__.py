@@ -53,6 +53,17 @@ WORDS: dict[str, str] = {
     "either": N_("may bend the result either way"),
     "lead": N_("lead"),
     "copper": N_("copper"),
+    "in-cooler": N_("It was packed into a cooler"),
+    "no-cooler": N_("It is in no cooler by the record"),
+    "with-me": N_("The sampler has it, in no cooler"),
+    "left-behind": N_("The sampler said that it was left behind"),
+    "broken": N_("It was said to be broken"),
+    "elsewhere": N_("The sampler said that it is elsewhere"),
+    "seal-whole": N_("whole"),
+    "seal-not-whole": N_("not whole"),
+    "seal-broken": N_("The seal was not whole when it was opened"),
+    "unsealed": N_("It was opened without a seal on it by the record"),
+    "not-relinquished": N_("Its handover was not recorded"),
 }
 
 

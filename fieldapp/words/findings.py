@@ -8,7 +8,17 @@ FINDINGS: dict[str, str] = {
         "is on no bottle."
     ),
     "filled-not-received": N_(
-        "Bottle {bottle} was filled at {site} and has not been received; it was due {due}."
+        "Bottle {bottle} was filled at {site} and has not been received; due {due}. {last}."
+    ),
+    "other-cooler": N_("Bottle {bottle} was packed into cooler {packed} and arrived in {box}."),
+    "seal-differs": N_(
+        "Cooler {box}, {day}: the seals put on were {put_on}; the laboratory read {read}, {whole}."
+    ),
+    "count-differs": N_(
+        "Cooler {box}, {day}: the laboratory counted {counted} bottles, the record has {packed}."
+    ),
+    "custody-gap": N_(
+        "Cooler {box}, {day}: nothing shows who kept it from {since} to {until}. {why}."
     ),
     "received-not-filled": N_(
         "Bottle {bottle} was received, but the record of its visit does not say that it was filled."

@@ -28,6 +28,7 @@ class BottleLocated(Done):
 
     bottle: str
     how: str  # with-me, left-behind, broken, elsewhere
+    route: str = ""
     where: str = private()
 
 
@@ -111,3 +112,7 @@ class ReceiptStated(Done):
     on: str
     document: str = ""
     name: str = private()
+
+    def subjects(self) -> tuple[str, ...]:
+        """Return the cooler and every bottle that came out of it."""
+        return (*super().subjects(), *(f"bottle:{code}" for code in self.numbers))
