@@ -42,8 +42,11 @@ def read_or_refused(text: str) -> Protocol | tuple[Fault, ...]:
         return bad.faults
 
 
-def test_two_protocols_ship():
-    assert list(shipped()) == ["first-and-fifth", "first-litre"]
+SHIPPED = ["first-and-fifth", "first-litre", "thirty-minute"]
+
+
+def test_three_protocols_ship():
+    assert list(shipped()) == SHIPPED
 
 
 def test_an_unknown_protocol_is_named():
@@ -53,7 +56,7 @@ def test_an_unknown_protocol_is_named():
     assert caught.value.values == {"what": "protocol", "name": "third-litre"}
 
 
-@pytest.mark.parametrize("name", ["first-litre", "first-and-fifth"])
+@pytest.mark.parametrize("name", SHIPPED)
 def test_a_shipped_protocol_is_known_by_the_digest_of_its_own_bytes(name):
     file = Path(model_module.__file__).with_name(f"{name}.toml")
 
@@ -61,27 +64,30 @@ def test_a_shipped_protocol_is_known_by_the_digest_of_its_own_bytes(name):
     assert read_protocol(find(name).toml) == find(name)
 
 
-@pytest.mark.parametrize("name", ["first-litre", "first-and-fifth"])
+@pytest.mark.parametrize("name", SHIPPED)
 def test_each_value_of_a_shipped_protocol_stands_beside_its_source(name):
     protocol = find(name)
 
     assert protocol.source
     assert protocol.acidify_source
     assert protocol.tap.source
-    assert protocol.stand.source
-    assert protocol.stand.question_source
+    if protocol.stand:
+        assert protocol.stand.source
+        assert protocol.stand.question_source
     asked = [step for step in protocol.steps if not (isinstance(step, Fill) and not step.keep)]
     assert [step.id for step in asked if not step.source or not step.why] == []
 
 
-@pytest.mark.parametrize("name", ["first-litre", "first-and-fifth"])
+@pytest.mark.parametrize("name", SHIPPED)
 def test_each_step_says_why_in_two_sentences(name):
-    whys = [step.why for step in find(name).steps if step.why] + [find(name).stand.why]
+    protocol = find(name)
+    whys = [step.why for step in protocol.steps if step.why]
+    whys += [protocol.stand.why] if protocol.stand else []
 
     assert [why for why in whys if why.count(". ") != 1 or not why.endswith(".")] == []
 
 
-@pytest.mark.parametrize("name", ["first-litre", "first-and-fifth"])
+@pytest.mark.parametrize("name", SHIPPED)
 def test_each_question_has_its_words_and_a_word_for_each_answer(name):
     asks = [step for step in find(name).steps if isinstance(step, Ask)]
 
@@ -106,6 +112,28 @@ def test_the_pair_binds_from_november_2027():
     assert protocol.in_force_to is None
 
 
+def test_the_thirty_minute_stand_is_canadas_and_has_no_last_day():
+    protocol = find("thirty-minute")
+
+    assert protocol.jurisdiction == "Canada"
+    assert protocol.in_force_on(date(2027, 5, 4))
+    assert protocol.in_force_to is None
+
+
+def test_the_thirty_minute_stand_runs_five_minutes_stands_thirty_and_fills_two_litres_in_one_run():
+    protocol = find("thirty-minute")
+
+    assert protocol.stand is None
+    (run,) = [step for step in protocol.steps if isinstance(step, Run)]
+    (stand,) = [step for step in protocol.steps if isinstance(step, StandWait)]
+    assert (run.minimum, run.breach) == (timedelta(minutes=5), "bar")
+    assert (stand.minimum, stand.breach) == (timedelta(minutes=30), "bar")
+    assert [(one.volume_ml, one.kind, one.running_on) for one in protocol.labelled()] == [
+        (1000, "standing", False),
+        (1000, "standing", True),
+    ]
+
+
 def test_a_first_litre_is_one_wide_litre_for_lead_and_copper():
     (draw,) = find("first-litre").draws()
 
@@ -125,7 +153,7 @@ def test_of_a_pair_the_first_and_the_fifth_carry_labels():
     assert len(protocol.labelled(keep_poured=True)) == 5
 
 
-@pytest.mark.parametrize("name", ["first-litre", "first-and-fifth"])
+@pytest.mark.parametrize("name", ["first-and-fifth", "first-litre"])
 def test_the_stand_is_six_hours_and_asked_about_above_eighteen(name):
     stand = find(name).stand
 

@@ -19,6 +19,7 @@ BLANK = ((6, "blank", "blank"),)
 VISITS = {
     "first litre": ("first-litre", ((1, "compliance"), (2, "blank", "blank"))),
     "pair": ("first-and-fifth", PAIR + BLANK),
+    "thirty minutes": ("thirty-minute", ((1, "compliance"), (2, "compliance"))),
 }
 # told only because something is missing, so they go when it arrives (R7)
 OF_ABSENCE = {"not-asked", "stand-unknown", "wrong-order"}
@@ -38,6 +39,7 @@ ACTIONS = st.one_of(
     st.tuples(st.just("use"), HALF_HOURS, st.integers(0, 6)),
     st.tuples(st.just("unknown")),
     st.tuples(st.just("shut")),
+    st.tuples(st.just("waste"), st.booleans()),
     st.tuples(st.just("set"), DRAWS, CODES),
     st.tuples(st.just("fill"), DRAWS, CODES, FILLS),
     st.tuples(st.just("pour"), DRAWS, FILLS),
@@ -109,6 +111,9 @@ ACTS = {
     "unknown": lambda kitchen: kitchen.record(
         facts.WaterUsed, from_="", to="", exact="unknown", where=""
     ),
+    "waste": lambda kitchen, opens: kitchen.record(
+        facts.RunStarted if opens else facts.RunEnded, step="run"
+    ),
     "shut": lambda kitchen: kitchen.record(facts.StandStarted),
     "set": _set,
     "fill": _fill,
@@ -173,6 +178,26 @@ def test_no_press_makes_a_deviation_disappear(visit, path):
         assert before - (OF_ABSENCE if closed else set()) <= set(kitchen.kinds())
 
 
+USES = facts.WaterUsed | facts.StandStarted | facts.RunStarted | facts.RunEnded
+
+
+def _least(kitchen: Kitchen) -> timedelta:
+    return HOUR / 2 if kitchen.name == "thirty-minute" else 6 * HOUR
+
+
+def _ran_five(kitchen: Kitchen, before) -> bool:
+    """Say whether the tap ran five minutes to waste before that entry, from opening to closing."""
+    since = None
+    for entry in kitchen.entries[: kitchen.entries.index(before)]:
+        if isinstance(entry.fact, facts.RunStarted):
+            since = entry.at
+        if isinstance(entry.fact, facts.RunEnded) and since:
+            if entry.at - since >= HOUR / 12:
+                return True
+            since = None
+    return False
+
+
 def forbidden(kitchen: Kitchen) -> set[str]:
     """Return what the document forbids and the facts show, told without the engine."""
     own = {one.draw for one in kitchen.protocol.draws()}
@@ -182,7 +207,7 @@ def forbidden(kitchen: Kitchen) -> set[str]:
         draws = {getattr(fact, "draw", 0), *getattr(fact, "draws", ())} & own
         if isinstance(fact, facts.WaterUsed) and not fact.to:
             unknown.append(entry.at)  # it may have run until then
-        elif isinstance(fact, facts.WaterUsed | facts.StandStarted):
+        elif isinstance(fact, USES):
             known.append(parse_utc(fact.to) if hasattr(fact, "to") else entry.at)
             unknown.clear()  # who knows has answered who did not
         if isinstance(fact, facts.QuestionAnswered) and fact.answer in ("filter", "hot"):
@@ -190,8 +215,10 @@ def forbidden(kitchen: Kitchen) -> set[str]:
         if not draws or isinstance(fact, facts.BottleSet | facts.TapClosed):
             continue
         uses = known + unknown
-        if first is None and uses and entry.at - max(uses) < 6 * HOUR:
+        if first is None and uses and entry.at - max(uses) < _least(kitchen):
             found.add("stand")
+        if first is None and _least(kitchen) < HOUR and not _ran_five(kitchen, entry):
+            found.add("run")
         first = first or entry
         if not isinstance(fact, facts.TapOpened):
             found |= _of_filling(kitchen, fact, filled)
@@ -218,6 +245,7 @@ def _matters(kitchen: Kitchen, draw: int) -> bool:
 SHOWN = {
     "stand": STAND_KINDS,
     "order": {"wrong-order"},
+    "run": {"run-short"},
     "twice": {"filled-twice"},
     "fill": {"fill-below", "fill-over", "fill-spilled", "litres-shifted"},
     "filter": {"filter-in-place"},

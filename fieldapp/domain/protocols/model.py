@@ -56,6 +56,7 @@ class Protocol:
     steps: tuple[Step, ...]
     sha256: str
     toml: str
+    jurisdiction: str = ""
 
     def in_force_on(self, day: date) -> bool:
         """Say whether the text binds on that day; outside it is noted, never refused."""
@@ -101,6 +102,7 @@ def read_protocol(text: str) -> Protocol:
         "id": top.name("id"),
         "title": top.text("title"),
         "source": top.text("source"),
+        "jurisdiction": top.text("jurisdiction", ""),
         "in_force_from": window.day("from", optional=True) if window else None,
         "in_force_to": window.day("to", optional=True) if window else None,
         "analytes": analytes,

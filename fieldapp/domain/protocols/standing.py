@@ -40,6 +40,7 @@ class Due:
     minimum: timedelta | None = None  # for "run", "wait"
     since: datetime | None = None
     until: datetime | None = None  # when a wait or run is long enough
+    here: bool = False  # for "wait": a stand inside the visit, measured in the kitchen
     why: str = ""
     source: str = ""
     says: str = ""  # for "ask", "last-use": the document's own question, plain English

@@ -47,6 +47,7 @@ class Filling:
     fills: tuple[Fill, ...]
     rule: StandRule | None = None
     wait: str = ""  # id of the step in which the stand is waited for
+    here: bool = False  # the stand is inside the visit, not before it
 
     @property
     def draws(self) -> tuple[int, ...]:
@@ -81,16 +82,16 @@ def stations(
     known = set(preset) - {LAST_USE}
     before: list[Station] = []
     after: list[Station] = []
-    rule, wait = protocol.stand, "stand"
+    rule, wait, here = protocol.stand, "stand", False
     for steps in _runs(protocol.steps):
         first = steps[0]
         if isinstance(first, StandWait):
-            rule, wait = _rule_of(first), first.id
+            rule, wait, here = _rule_of(first), first.id, True
         elif isinstance(first, Fill):
             fills = [step for step in steps if isinstance(step, Fill)]
             kept = tuple(replace(fill, keep=fill.keep or keep_poured) for fill in fills)
             # what stands between two fills comes before the second, what follows the last after
-            before += [*after, Filling(kept, rule, wait if rule else "")]
+            before += [*after, Filling(kept, rule, wait if rule else "", here)]
             after, rule = [], None
         else:
             station = _single(first)
@@ -149,6 +150,7 @@ def _rule_of(wait: StandWait) -> StandRule:
         breach=wait.breach,
         why=wait.why,
         source=wait.source,
+        question_source=wait.source,
     )
 
 

@@ -1,10 +1,10 @@
 """One visit as the engine looks at it: its stations, what is recorded, and the reading now."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
-from datetime import timedelta
+from datetime import datetime, timedelta
 
-from fieldapp.domain.facts import TapOpened, VisitPlanned
+from fieldapp.domain.facts import RunStarted, TapOpened, VisitPlanned
 from fieldapp.domain.protocols.model import Protocol
 from fieldapp.domain.protocols.seen import Answer, Noted, Seen, Use
 from fieldapp.domain.protocols.stations import Filling, Question, Station, Waste, asks, stations
@@ -83,6 +83,8 @@ class Visit:
         for use in others:
             if use.position < began.position and not _after(use, began):
                 uses.add(use)
+        for use in self._left_open(filling, began):
+            uses.add(use)
         found = _some(uses.stood(began.at, began.mark, self.bound))
         for use in _told_late(others, began):
             uses.add(use)
@@ -102,15 +104,41 @@ class Visit:
         since = found is not None and self.seen.since(found.position, position, self.bound)
         return found.answer if found and since else ""
 
+    def _left_open(self, filling: Filling, began: Noted) -> Iterable[Use]:
+        """Return the runs to waste before a draw of which nobody said that the tap was shut.
+
+        It was shut at some time until the draw, so how long the water stood is not known.
+        """
+        for waste in self.wastes(filling):
+            started = self.running_since(waste.step, began)
+            if started:
+                name = started.entry.hash
+                yield Use(started.position, started.at, began.at, None, "stated", name)
+
+    def wastes(self, filling: Filling) -> list[Waste]:
+        """Return the runs to waste that come before those draws."""
+        found = (one for one in self.stations if isinstance(one, Waste))
+        return [one for one in found if one.before == filling.draws]
+
+    def running_since(self, step: Run, before: Noted | None = None) -> Noted | None:
+        """Return the opening of the tap to waste that no closing has answered."""
+        runs = sorted(self.seen.runs.get(step.id, ()), key=lambda one: one.order)
+        runs = [one for one in runs if before is None or one.order <= before.order]
+        return runs[-1] if runs and isinstance(runs[-1].fact, RunStarted) else None
+
+    def ran(self, started: Noted) -> timedelta:
+        """Return how long water has run to waste by now, at the least."""
+        return _lasted(started, self.now.at, Mark(self.now.at, self.now.mono, self.now.boot))
+
     def ran_enough(self, step: Run, before: Noted | None) -> bool:
         """Say whether the water ran to waste long enough before that fact."""
         started: Noted | None = None
-        for one in self.seen.runs.get(step.id, ()):
+        for one in sorted(self.seen.runs.get(step.id, ()), key=lambda one: one.order):
             if before and one.order > before.order:
                 break
-            if one.fact.kind == "run.started":
+            if isinstance(one.fact, RunStarted):
                 started = one
-            elif started and _ran(started, one) >= step.minimum:
+            elif started and _lasted(started, one.at, one.mark) >= step.minimum:
                 return True
         return False
 
@@ -151,9 +179,17 @@ def running(visit: Visit, draw: int) -> bool:
 
 def over(visit: Visit, waste: Waste) -> bool:
     """Say whether water need not run to waste any more."""
-    began = visit.seen.began(waste.before)
+    if visit.seen.began(waste.before) is not None:
+        return True
+    if visit.running_since(waste.step):
+        return False  # the tap is open: first it is shut
     excused = visit.excused(("run-short",), (waste.step.id,), -1)
-    return began is not None or excused or visit.ran_enough(waste.step, None)
+    return excused or visit.ran_enough(waste.step, None)
+
+
+def flushed(visit: Visit, filling: Filling) -> bool:
+    """Say whether no water need run to waste any more before those draws."""
+    return all(over(visit, one) for one in visit.wastes(filling))
 
 
 def _after(use: Use, began: Noted) -> bool:
@@ -175,10 +211,11 @@ def _told_late(uses: Sequence[Use], began: Noted) -> list[Use]:
     ]
 
 
-def _ran(start: Noted, end: Noted) -> timedelta:
-    if start.mark and end.mark:
-        return between(start.mark, end.mark).shortest
-    return end.at - start.at
+def _lasted(start: Noted, at: datetime, mark: Mark | None) -> timedelta:
+    """Return how long it is from a fact to a moment, at the least."""
+    if start.mark and mark:
+        return between(start.mark, mark).shortest
+    return at - start.at
 
 
 def _some(stood: Stood | None) -> list[Stood]:

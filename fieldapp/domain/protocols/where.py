@@ -21,6 +21,7 @@ from fieldapp.domain.protocols.visit import (
     STAND_LONG,
     WAIT,
     Visit,
+    flushed,
     over,
     running,
     visit_of,
@@ -153,24 +154,26 @@ def _signature(visit: Visit, station: Signature) -> Turn | None:
 
 
 def _waste(visit: Visit, station: Waste) -> Turn | None:
+    """Return the turn of water to waste: the opening, then the closing, barred while too early."""
     if over(visit, station):
         return None
     step = station.step
-    runs = visit.seen.runs.get(step.id, [])
-    since = runs[-1].at if runs and runs[-1].fact.kind == "run.started" else None
-    until = since + step.minimum if since else None
+    started = visit.running_since(step)
+    until = visit.now.at + (step.minimum - visit.ran(started)) if started else None
     due = Due(
         kind="run",
         step=step.id,
         minimum=step.minimum,
-        since=since,
+        since=started.at if started else None,
         until=until,
         why=step.why,
         source=step.source,
     )
-    if until is None or visit.now.at >= until:
+    if started is None or until is None or visit.now.at >= until:
         return due, ()
-    values = {"minimum": step.minimum}
+    if visit.excused(("run-short",), (step.id,), -1):
+        return due, ()  # it was said that it ran short; the tap is still open
+    values = {"minimum": step.minimum, "ran": visit.ran(started)}
     return due, (Bar("run-too-short", step.breach, "run-short", values, until),)
 
 
@@ -260,6 +263,7 @@ def _wait(filling: Filling, rule: StandRule, told: Stood | None = None) -> Due:
         minimum=rule.minimum,
         since=told.since if told else None,
         until=told.enough_at(rule) if told else None,
+        here=filling.here,
         why=rule.why,
         source=rule.source,
     )
@@ -268,13 +272,14 @@ def _wait(filling: Filling, rule: StandRule, told: Stood | None = None) -> Due:
 def _stand(visit: Visit) -> tuple[StandRule | None, Stood | None]:
     """Return the stand that pages show: before the first draw that asks for one.
 
-    A visit closed without that draw has none: nothing ended it.
+    A visit closed without that draw has none: nothing ended it. Nor has one in which water must
+    run to waste first: until then nothing has begun to stand.
     """
     for filling in visit.fillings:
         if filling.rule:
             drawn = visit.seen.began(filling.draws)
-            told = visit.stood(filling) if drawn or not visit.seen.closed else None
-            return filling.rule, told
+            stands = not visit.seen.closed and flushed(visit, filling)
+            return filling.rule, visit.stood(filling) if drawn or stands else None
     return None, None
 
 
