@@ -9,6 +9,8 @@ import contextlib
 import errno
 import hashlib
 import json
+import os
+import shutil
 import sqlite3
 import threading
 from collections.abc import Callable, Iterator, Mapping, Sequence
@@ -46,6 +48,8 @@ from sync.follow import ODD_DATA
 from sync.follow import follow as follow_with_care
 from sync.keys import DeviceKey
 from sync.replica import Moment, Pin, Replica
+from sync.shelf import FOLDER as BLOBS
+from sync.shelf import Shelf
 
 REALM = Realm("tapwitness")
 MOST_BYTES = {"protocol.kept": 24 * 1024, "log.carried": 32 * 1024}
@@ -114,6 +118,7 @@ class Store:
         self.enrolling: Callable[[str, bytes, str], Mapping[str, Any]] | None = None
         self._in_transaction = False
         self._touched: set[str] = set()
+        self.shelf = Shelf(folder / BLOBS)
         self.identity = identity.read(folder)
         self.dev = self.identity.dev
         self.key = DeviceKey.load(identity.key_path(folder))
@@ -194,6 +199,7 @@ class Store:
             elif self._behind_anchor(db):
                 self.open_log(db, "restored")
         self._check_tail()
+        self.shelf.sweep()
         self._keep_ballast()
 
     def _behind_anchor(self, db: sqlite3.Connection) -> bool:
@@ -254,10 +260,17 @@ class Store:
         return read
 
     def _keep_ballast(self) -> None:
+        """Lay the ballast where there is room for it twice; the last free bytes are the record's.
+
+        Random bytes, for some file systems keep zeros in no room at all.
+        """
         ballast = self.folder / BALLAST
-        if not ballast.exists():
-            with contextlib.suppress(OSError):
-                ballast.write_bytes(b"\0" * BALLAST_BYTES)
+        if ballast.exists() or shutil.disk_usage(self.folder).free < 2 * BALLAST_BYTES:
+            return
+        try:
+            ballast.write_bytes(os.urandom(BALLAST_BYTES))
+        except OSError:
+            ballast.unlink(missing_ok=True)
 
     # transactions
 
@@ -432,6 +445,7 @@ class Store:
         act: str,
         moment: Reading,
         refs: Sequence[str] = (),
+        blobs: Sequence[Mapping[str, Any]] = (),
     ) -> Entry:
         """Build, sign and insert one entry at the end of the current log; it is read back there."""
         log = self.current_log(db)
@@ -444,7 +458,7 @@ class Store:
             "dev": self.dev, "kind": given.kind, "id": act, "at": text(moment.at),
             "off": moment.off, "mono": moment.mono, "boot": moment.boot, "by": by, "auth": auth,
             "scope": scope_of(Pages(db), given), "refs": [n for n in names if n],
-            "blobs": list(given.blobs()), "data": given.data(),
+            "blobs": [*given.blobs(), *(dict(one) for one in blobs)], "data": given.data(),
         }  # fmt: skip
         if central_time := self.get("ct"):
             fields["ct"] = json.loads(central_time)
@@ -565,7 +579,7 @@ class Store:
         given = KINDS[kind].read(data)
         entry = self._append(
             db, given, by="", auth="none", act=identity.new_act(), moment=self.clock.read(),
-            refs=refs,
+            refs=refs, blobs=blobs,
         )  # fmt: skip
         projections.follow(db, [entry])
         return entry

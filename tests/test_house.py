@@ -394,10 +394,15 @@ def test_every_finding_has_its_sentence(kind):
 
 def made_findings() -> set[str]:
     """Return the kinds of finding that the rules make, read from their text."""
-    tree = ast.parse(_text("fieldapp.domain.reconcile"))
-    calls = [n for n in ast.walk(tree) if isinstance(n, ast.Call)]
-    made = [c for c in calls if ast.unparse(c.func) == "Finding" and c.args]
-    return {c.args[0].value for c in made if isinstance(c.args[0], ast.Constant)}
+    calls = [
+        node
+        for module in MODULES
+        if room(module) == "domain"
+        for node in ast.walk(ast.parse(_text(module)))
+        if isinstance(node, ast.Call) and ast.unparse(node.func).split(".")[-1] == "Finding"
+    ]
+    first = [call.args[0] for call in calls if call.args]
+    return {one.value for one in first if isinstance(one, ast.Constant)}
 
 
 def test_every_finding_that_is_made_is_listed():
