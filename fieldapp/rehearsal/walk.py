@@ -7,23 +7,22 @@ import base64
 import contextlib
 import shutil
 import tempfile
-from collections import deque
 from collections.abc import Callable, Iterator
-from datetime import datetime, timedelta
+from datetime import timedelta
 from pathlib import Path
 
 from fieldapp import identity, work
 from fieldapp.domain.errors import RuleBroken
-from fieldapp.domain.facts import RoutePlanned
 from fieldapp.nodes import become_central
 from fieldapp.places import shipped
 from fieldapp.reading.rounds import RoundFile, read_round
 from fieldapp.rehearsal.account import Account, account_of
 from fieldapp.rehearsal.browser import Browser, Trouble
 from fieldapp.rehearsal.day import Script
-from fieldapp.rehearsal.kitchen import Visit
 from fieldapp.rehearsal.nodes import NotStarted, Process, Time, make_node
 from fieldapp.rehearsal.script import read_script
+from fieldapp.rehearsal.way import Codes as Codes
+from fieldapp.rehearsal.way import Way, begins_at, choose
 from fieldapp.running import hand_over
 from fieldapp.store import Store
 from fieldapp.work.faults import said_of
@@ -31,10 +30,7 @@ from sync.errors import SyncError, Unsuitable
 from sync.folder import FolderLock
 
 CLEAN_DAY = "clean-day.json"
-TO_THE_LABORATORY = timedelta(hours=2)
-TO_THE_RESULTS = timedelta(days=3)
-
-Codes = dict[tuple[str, int], str]
+BEFORE_THE_DAY = timedelta(minutes=20)
 
 
 def rehearse(
@@ -104,8 +100,6 @@ class _Walk:
         self.folder, self.say = folder, say
         self.time = Time(planned.round.zone)
         self.days = sorted(planned.routes, key=lambda one: (one.day, one.route))
-        self.codes: Codes = {}
-        self.drawn: set[tuple[str, int]] = set()
         self.lines: list[str] = []
         self.stopped = False
 
@@ -116,11 +110,10 @@ class _Walk:
     def run(self) -> Account:
         """Do the whole way and return what it came to."""
         tablets = self._tablets()
-        first = self.days[0] if self.days else None
+        first = begins_at(self.planned, self.script)
         if first is not None:
-            day = datetime.fromisoformat(first.day).date()
-            self.time.begin(self.script.begins_at(day, self.time.zone) - timedelta(minutes=20))
-        self._plan()
+            self.time.begin(first - BEFORE_THE_DAY)
+        self.way = self._plan()
         try:
             with Process("central", self.central) as central:
                 for sampler, folder in tablets.items():
@@ -144,11 +137,12 @@ class _Walk:
             for n, sampler in enumerate(samplers)
         }
 
-    def _plan(self) -> None:
+    def _plan(self) -> Way:
         """Import the round at central and print its labels."""
         with make_node(self.central, self.time) as store:
-            self.codes = plan_at(store, self.name, self.data, self.planned)
-        self._tell(f"Desk: round {self.planned.round.round}, {len(self.codes)} labels printed.")
+            codes = plan_at(store, self.name, self.data, self.planned)
+        self._tell(f"Desk: round {self.planned.round.round}, {len(codes)} labels printed.")
+        return Way(self.planned, self.script, self.time, codes)
 
     def _day_of(self, sampler: str, folder: Path, central: str) -> None:
         """Enrol a tablet, fetch, walk its routes, send."""
@@ -158,72 +152,25 @@ class _Walk:
             browser = Browser(tablet.url)
             fetched = hand_over(folder, "sync", {}, work.quiet)
             self._tell(f"Kitchen {folder.name}: enrolled, fetched {fetched['pulled']} entries.")
-            _choose(browser, sampler)
+            choose(browser, sampler)
             for route in self.days:
                 if route.sampler == sampler:
-                    self._walk_route(browser, route)
+                    self.way.walk(browser, route)
             sent = hand_over(folder, "sync", {}, work.quiet)
             self._tell(
                 f"Kitchen {folder.name}: {browser.presses} presses, sent {sent['pushed']} entries, "
                 f"waiting {sent['waiting']}."
             )
 
-    def _walk_route(self, browser: Browser, route: RoutePlanned) -> None:
-        """Walk the visits in the script's order; a left one is come back to when it is ready."""
-        day = datetime.fromisoformat(route.day).date()
-        self.time.until(self.script.begins_at(day, self.time.zone))
-        mine = [v for v in self.planned.visits if v.route == route.route]
-        mine.sort(key=lambda v: (self.script.visit(v.visit).arrives or "99", v.position))
-        ahead = deque(mine)
-        left: list[tuple[datetime, Visit]] = []
-        while ahead or left:
-            arrival = self._arrival(ahead[0].visit, day) if ahead else None
-            due = min(left, key=lambda one: one[0]) if left else None
-            if due is not None and (arrival is None or due[0] <= arrival):
-                left.remove(due)
-                self.time.until(due[0])
-                visit = due[1]
-            else:
-                planned = ahead.popleft()
-                if arrival is not None:
-                    self.time.until(arrival)
-                visit = self._visit(browser, planned.visit, route.sampler)
-            back = visit.walk()
-            self.drawn |= {(visit.visit, draw) for draw in visit.carried}
-            if back is not None:
-                left.append((back, visit))
-
-    def _arrival(self, visit: str, day: object) -> datetime:
-        at = self.script.arrives_at(visit, day, self.time.zone)  # type: ignore[arg-type]
-        return at or self.time.now()
-
-    def _visit(self, browser: Browser, visit: str, sampler: str) -> Visit:
-        codes = {draw: code for (of, draw), code in self.codes.items() if of == visit}
-        signer = next((p.name for p in self.planned.people if p.person == sampler), sampler)
-        return Visit(browser, self.time, visit, self.script.visit(visit), codes, signer)
-
     def _receive(self, central: str) -> None:
-        """Receive every filled bottle at the Bench, with the laboratory's numbers."""
-        self.time.until(self.time.now() + TO_THE_LABORATORY)
-        browser = Browser(central)
-        _choose(browser, self._person("clerk"))
-        page = browser.open("/bench/")
-        for code, number in self._cooler().values():
-            form = page.main()
-            assert form is not None
-            page = browser.press(page, form, {"bottle": code, "laboratory_number": number})
-        self._tell(f"Bench: {len(self.drawn)} bottles scanned.")
-
-    def _cooler(self) -> dict[tuple[str, int], tuple[str, str]]:
-        """Return code and laboratory number of each bottle that came, by visit and draw."""
-        came = [place for place in self.codes if place in self.drawn]
-        return {place: (self.codes[place], self.script.number(n)) for n, place in enumerate(came)}
+        """Receive every filled bottle at the Bench."""
+        self.way.receive(Browser(central))
+        self._tell(f"Bench: {len(self.way.drawn)} bottles scanned.")
 
     def _results(self) -> None:
         """Import the laboratory's file at central, over its own door for commands."""
-        self.time.until(self.time.now() + TO_THE_RESULTS)
-        table = self.script.results_csv(self._cooler())
-        if table.count("\n") < 2:
+        table = self.way.results()
+        if not table:
             return
         raw = base64.b64encode(table.encode()).decode()
         answer = hand_over(
@@ -231,17 +178,12 @@ class _Walk:
         )
         self._tell(f"Desk: {answer['rows']} results in.")
 
-    def _person(self, role: str) -> str:
-        """Return somebody of that role; the file's first person where nobody has it."""
-        people = self.planned.people
-        return next((p.person for p in people if role in p.roles), people[0].person)
-
     def _tell(self, line: str) -> None:
         self.lines.append(line)
         self.say(line)
 
 
-def plan_at(store: Store, name: str, data: bytes, planned: RoundFile) -> Codes:
+def plan_at(store: Store, name: str, data: bytes, planned: RoundFile) -> dict[tuple[str, int], str]:
     """Make the node a central, import the round there, print its labels; return the codes."""
     become_central(store)
     raw = base64.b64encode(data).decode()
@@ -258,8 +200,3 @@ def invite_and_enrol(central: Path, tablet: Path, url: str, person: str) -> None
     """Enrol a tablet for a person with a code that the running central gives."""
     invited = hand_over(central, "invite", {"person": person}, work.quiet)
     hand_over(tablet, "enrol", {"url": url, "code": invited["code"]}, work.quiet)
-
-
-def _choose(browser: Browser, person: str) -> None:
-    page = browser.open("/")
-    browser.press(page, page.form("/person"), {"person": person})
