@@ -69,8 +69,55 @@ RULES: dict[str, str] = {
         "type the number of this one."
     ),
     "too-late-to-take-back": N_(
-        "Another bottle was received since. Record what is right now; the earlier entry stays"
+        "Something else was recorded since. Record what is right now; the earlier entry stays"
         " beside it."
+    ),
+    "nothing-to-take-back": N_(
+        "There is nothing to take back: your last receipt was taken back already, or none came"
+        " since. To take back an earlier one, say what is right now."
+    ),
+    "number-is-card": N_(
+        "{number} is a card of the counter, not a number of yours. Scan the sticker, then the card."
+    ),
+    "bad-picture": N_("That cannot be kept as a picture. Photograph it again."),
+    "bad-picture-empty": N_("No picture came. Choose or take one, then send it again."),
+    "bad-picture-too-large": N_(
+        "That file is larger than {most_mb} MB. Take the picture with a smaller size."
+    ),
+    "bad-picture-no-picture": N_(
+        "That is no picture this device can read. Send a JPEG, a PNG or a WebP."
+    ),
+    "bad-picture-heic": N_(
+        "That is a HEIC picture, which this device cannot read. Set the camera to save JPEG, or "
+        "take the picture from this page."
+    ),
+    "bad-picture-too-many-pixels": N_(
+        "That picture has more than {most_mp} million pixels. Take it with a smaller size."
+    ),
+    "bad-picture-damaged": N_(
+        "That picture is damaged or cut short. Take it again; nothing was kept of it."
+    ),
+    "no-room": N_(
+        "The disk has too little room left for photos, so this one was not kept. Everything else "
+        "is still recorded. Free some space, then take it again."
+    ),
+    "no-code-seen": N_(
+        "No bottle code can be read in that picture. Hold the label flat and near, or type the "
+        "code."
+    ),
+    "no-code-seen-several": N_(
+        "That picture shows {count} bottle codes. Photograph one label alone, or type its code."
+    ),
+    "no-code-seen-other": N_(
+        "The code in that picture is of no bottle: it says “{text}”. Photograph the bottle's own "
+        "label."
+    ),
+    "other-cooler": N_(
+        "By its record bottle {bottle} lies in another cooler. Say whether it is kept here or set"
+        " aside."
+    ),
+    "seal-unsaid": N_(
+        "Type the number on the seal as you read it, or say that it is broken or missing."
     ),
     "result-stands": N_(
         "A result of bottle {bottle} is in already. Whether it is analysed can only be "
@@ -116,4 +163,30 @@ RULES: dict[str, str] = {
     "convention-silent": N_(
         "The convention {convention} says nothing for {n} results. Name another."
     ),
+    "box-missing": N_("Say into which box: type the number painted on the cooler."),
+    "box-closed": N_("Cooler {box} is sealed. Open it again with a reason, or take another box."),
+    "nothing-to-pack": N_("Every filled bottle of this route has its place. Seal the cooler."),
+    "bottle-empty": N_(
+        "By the record {code} holds no water. Finish its visit first, or say that it is filled."
+    ),
+    "in-sealed-cooler": N_(
+        "{code} lies in cooler {box}, which is sealed. Open that one again first, with a reason."
+    ),
+    "cooler-bare": N_("No bottle is in cooler {box} yet. Put the bottles in first."),
+    "seal-missing": N_("Type or scan the number on the seal."),
+    "seal-used": N_("Seal {number} is or was on cooler {box}. Read the number again."),
+    "bottles-loose": N_("In no cooler: {codes}. Put them in, or say where they are; then seal."),
+    "count-other": N_(
+        "You counted {counted} bottles; {packed} are in it by the record. Count again, or scan "
+        "what is missing."
+    ),
+    "not-sealed": N_("Cooler {box} bears no seal. Seal it first, then hand it over."),
+    "why-missing": N_("Say in a few words why the seal was broken."),
+    "waybill-missing": N_("Type the courier's waybill, or the name of whoever takes it."),
+    "nobody-named": N_("Type the name of whoever signed for the laboratory."),
+    "nothing-came": N_("Mark at least one bottle that came."),
+    "number-twice": N_(
+        "The laboratory's number {number} stands on bottle {other} already. Read the sheet again."
+    ),
+    "not-that-late": N_("{on} is still to come. Type the day that stands on the sheet."),
 }
