@@ -54,7 +54,9 @@ def adopt(replica: Replica, log: str, theirs: Sequence[Entry]) -> Adopted:
         lost = [] if mine[same] is None else _from(db, log, rest[0].seq)
         fresh = _keep(replica, db, log, rest, forked=bool(lost))
         for entry in lost:
-            parcel = replica.hooks.write(db, CARRIED, carry(entry), refs=[b64(entry.hash)])
+            parcel = replica.hooks.write(
+                db, CARRIED, carry(entry), refs=[b64(entry.hash)], blobs=_blobs(entry)
+            )
             ledger.note_carriage(db, entry.hash, parcel.hash)
         return Adopted(len(lost), fresh, Head(rest[-1].seq, rest[-1].hash))
 
@@ -72,6 +74,12 @@ def carry(entry: Entry) -> dict[str, Any]:
     else:
         data["orig"] = entry.body.decode("utf-8")
     return data
+
+
+def _blobs(entry: Entry) -> list[Mapping[str, Any]]:
+    """Return the blobs an entry names: what carries it names them too, so that they travel."""
+    named = entry.fields().get("blobs")
+    return [one for one in named if isinstance(one, Mapping)] if isinstance(named, list) else []
 
 
 def carried(realm: Realm, fields: Mapping[str, Any]) -> Entry:

@@ -12,6 +12,7 @@ from sync.rows import (
     entry_of,
     find,
     holds,
+    index_blobs,
     index_scopes,
     keep_private,
     read_back,
@@ -186,6 +187,7 @@ def add(
     db.execute("DELETE FROM borrowed WHERE hash = ?", (entry.hash,))
     keep_private(db, entry)
     index_scopes(db, entry, scopes_of(fields))
+    index_blobs(db, entry, fields)
 
 
 def add_branch(
@@ -213,6 +215,7 @@ def add_branch(
     )
     read_back(db, "branch", entry, realm)
     keep_private(db, entry)
+    index_blobs(db, entry, entry.fields())
     return True
 
 

@@ -8,6 +8,7 @@ from typing import Any, Protocol
 
 from sync.entry import Entry, Realm
 from sync.keys import DeviceKey, key_id
+from sync.shelf import Shelf
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,6 +47,10 @@ class Hooks(Protocol):
     @property
     def dev(self) -> str:
         """Return this device's id."""
+
+    @property
+    def shelf(self) -> Shelf:
+        """Return where this node keeps its blobs."""
 
     def transaction(self) -> AbstractContextManager[sqlite3.Connection]:
         """Open the one write transaction; commit at its end, roll back on any exception."""

@@ -2,12 +2,14 @@
 
 import hashlib
 import sqlite3
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 from sync.encoding import unb64
 from sync.entry import Entry, Realm, digest, private_part
 from sync.errors import NotKept
+from sync.shelf import is_name
 
 ROW = "log, seq, hash, body, sig"
 Row = tuple[str, int, bytes, bytes, bytes]
@@ -56,6 +58,21 @@ def index_scopes(db: sqlite3.Connection, entry: Entry, scopes: Sequence[str]) ->
         "INSERT INTO entry_scope VALUES (?, ?, ?, ?) ON CONFLICT DO NOTHING",
         [(scope, entry.log, entry.seq, entry.hash) for scope in scopes],
     )
+
+
+def index_blobs(db: sqlite3.Connection, entry: Entry, fields: Mapping[str, Any]) -> None:
+    """Note which blobs an entry names; what has not the shape of a blob is passed over."""
+    named = fields.get("blobs")
+    for one in named if isinstance(named, list) else []:
+        if not isinstance(one, Mapping) or not is_name(one.get("h")):
+            continue
+        size, media = one.get("n"), one.get("t")
+        if type(size) is int and 0 < size < 2**53 and isinstance(media, str):
+            db.execute(
+                "INSERT INTO blob (h, hash, log, seq, n, t) VALUES (?, ?, ?, ?, ?, ?) "
+                "ON CONFLICT DO NOTHING",
+                (one["h"], entry.hash, entry.log, entry.seq, size, media),
+            )
 
 
 def read_back(db: sqlite3.Connection, table: str, entry: Entry, realm: Realm | None) -> None:

@@ -11,6 +11,7 @@ from sync.rows import (
     entry_of,
     find,
     holds,
+    index_blobs,
     index_scopes,
     keep_private,
     read_back,
@@ -45,6 +46,8 @@ def borrow(
             (entry.log, entry.seq, entry.hash, entry.body, entry.sig, at, frm),
         )
         read_back(db, "borrowed", entry, realm)
+        if b'"blobs":[{' in entry.body:  # spares parsing of the many that name none
+            index_blobs(db, entry, entry.fields())
     keep_private(db, entry)
     index_scopes(db, entry, [scope] if isinstance(scope, str) else scope)
     return not known

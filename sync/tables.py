@@ -67,6 +67,13 @@ TABLES = (
     # Which entry carried one over that stands in a history central does not name.
     """CREATE TABLE IF NOT EXISTS carriage (
         hash BLOB PRIMARY KEY, parcel BLOB NOT NULL) STRICT, WITHOUT ROWID""",
+    # Which blobs the entries held here name; a blob is taken from nobody unless one does.
+    """CREATE TABLE IF NOT EXISTS blob (
+        h TEXT NOT NULL, hash BLOB NOT NULL, log TEXT NOT NULL, seq INTEGER NOT NULL,
+        n INTEGER NOT NULL, t TEXT NOT NULL, PRIMARY KEY (h, hash)) STRICT, WITHOUT ROWID""",
+    "CREATE INDEX IF NOT EXISTS blob_log ON blob (log)",
+    # Which blobs central said it holds whole; a guess of what need not be sent, no more.
+    """CREATE TABLE IF NOT EXISTS blob_received (h TEXT PRIMARY KEY) STRICT, WITHOUT ROWID""",
     # Entries kept here that page tables could not take; a person's list, emptied by a rebuild.
     """CREATE TABLE IF NOT EXISTS unfollowed (
         hash BLOB PRIMARY KEY, log TEXT NOT NULL, seq INTEGER NOT NULL, says TEXT NOT NULL

@@ -34,7 +34,7 @@ ARROWS: dict[str, frozenset[str]] = {
     "nodes": frozenset({"store", "projections", "identity", "domain", "sync"}),
     "web": frozenset({
         "work", "commands", "projections", "store", "printing", "reading", "words", "domain",
-        "clock", "identity", "places",
+        "clock", "identity", "places", "photos", "scanning",
     }),
     "web/replication": frozenset({"work", "store", "sync"}),
     "work": frozenset({
@@ -52,6 +52,8 @@ ARROWS: dict[str, frozenset[str]] = {
     "schemas": frozenset({"domain"}),
     "words": frozenset({"domain"}),
     "identity": frozenset({"clock", "domain", "sync"}),
+    "photos": frozenset({"domain", "sync"}),
+    "scanning": frozenset({"photos", "domain"}),
     "clock": frozenset({"domain"}),
     "settings": frozenset(),
     "places": frozenset(),
@@ -69,7 +71,9 @@ OUTSIDE: dict[str, frozenset[str]] = {
     "words": frozenset(),
     "scopes": frozenset(),
     "clock": frozenset(),
+    "photos": frozenset({"PIL"}),
     "places": frozenset(),
+    "scanning": frozenset({"PIL", "zxingcpp"}),
     "schemas": frozenset({"marshmallow"}),
     "projections": frozenset({"sqlite_utils"}),
     "store": frozenset(),

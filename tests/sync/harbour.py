@@ -26,9 +26,11 @@ from sync.keys import DeviceKey, key_id
 from sync.ledger import Head
 from sync.peer import LoopbackPeer, Peer
 from sync.replica import Moment, Pin, Replica
+from sync.shelf import FOLDER, Shelf
 
 REALM = Realm("harbour")
 START = datetime(2031, 5, 4, 6, 30, tzinfo=UTC)
+NOWHERE = Path("/dev/null")  # no folder can be made here: a node without one keeps no blobs
 OWN_TABLES = (
     "CREATE TABLE own (n INTEGER PRIMARY KEY, log TEXT NOT NULL)",
     "CREATE TABLE followed (hash BLOB PRIMARY KEY)",
@@ -47,6 +49,7 @@ class Node:
         self.dev = dev
         self.key = DeviceKey.from_seed(bytes([seed]) * 32) if seed else DeviceKey.generate()
         self.folder = folder
+        self.shelf = Shelf((folder or NOWHERE) / FOLDER)
         self.pin: Pin | None = None
         self.asks: list[str] = []
         self.codes: set[str] = set()
@@ -139,7 +142,8 @@ class Node:
         private: bytes | None = None,
     ) -> Entry:
         log = self.own_logs(db)[-1]
-        return self._append(db, log, kind, data, refs=refs, scope=scope, private=private)
+        given = {"refs": refs, "scope": scope, "private": private, "blobs": blobs}
+        return self._append(db, log, kind, data, **given)
 
     def open_log(self, db: sqlite3.Connection, why: str) -> str:
         log = b64(hashlib.sha256(f"{self.dev} {next(self.ids)}".encode()).digest()[:16])
@@ -169,6 +173,14 @@ class Node:
         hidden = None if private is None else conceal(private, salt)[0]
         with self.transaction() as db:
             return self.write(db, "note.made", {"text": text}, scope=scope, private=hidden).hash
+
+    def photograph(self, data: bytes, *scope: str) -> str:
+        """Keep a picture, then save the fact that names it; return its name."""
+        name = self.shelf.keep(data)
+        named = {"h": name, "n": len(data), "t": "image/jpeg"}
+        with self.transaction() as db:
+            self.write(db, "note.made", {"text": f"photo {name[:8]}"}, scope=scope, blobs=[named])
+        return name
 
     def vouch(self, dev: str, public_key: bytes) -> None:
         """Enrol a device at this central."""
@@ -237,6 +249,7 @@ class Node:
         refs: Sequence[str] = (),
         scope: Sequence[str] = (),
         private: bytes | None = None,
+        blobs: Sequence[Mapping[str, Any]] = (),
     ) -> Entry:
         row = db.execute(
             "SELECT seq, hash FROM entry WHERE log = ? ORDER BY seq DESC LIMIT 1", (log,)
@@ -254,6 +267,7 @@ class Node:
             "boot": moment.boot,
             "refs": list(refs),
             "scope": list(scope),
+            **({"blobs": [dict(one) for one in blobs]} if blobs else {}),
             "data": dict(data),
         }
         limit = MOST_READ if kind == CARRIED else MOST_WRITTEN
