@@ -49,7 +49,7 @@ class Visit:
             until = _until(page)
             if until is None:
                 return None  # nothing to press and nothing to wait for: the visit is over
-            if self.script.waits == "away":
+            if self.script.waits == "away" and not _stays(page):
                 self.browser.press(page, page.form("/leave"))
                 return until
             self.time.until(until)
@@ -118,6 +118,12 @@ class Visit:
     def _sign(self, form: Form) -> dict[str, str]:
         pressed = {b["name"]: b.get("value", "") for b in form.buttons if b.get("name")}
         return {"name": self.signer, **pressed}
+
+
+def _stays(page: Page) -> bool:
+    """Say whether nobody leaves now: the tap runs."""
+    link = page.main_link()
+    return link is not None and "data-stay" in link
 
 
 def _until(page: Page) -> datetime | None:

@@ -39,6 +39,10 @@ class Time:
         self.folders.append(folder)
         self._write()
 
+    def leave(self, folder: Path) -> None:
+        """Move that folder's time no further: its node is gone."""
+        self.folders.remove(folder)
+
     def begin(self, at: datetime) -> None:
         """Set the first moment, before any node reads the time; earlier or later than today."""
         self.shift = at - datetime.now(UTC)
