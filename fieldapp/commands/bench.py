@@ -1,4 +1,4 @@
-"""What people may do at the Bench: receive a bottle, take a receipt back, bring in results.
+"""What people may do at the Bench: receive a bottle, take a receipt back.
 
 A bottle that stands on the counter has arrived, whatever its record says: it is received all the
 same and held where something stands against it (R1, R8). Only what cannot be a bottle of ours, a
@@ -6,25 +6,28 @@ code whose check character is wrong, is not recorded.
 """
 
 import re
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from datetime import timedelta
-from typing import Any, Protocol
 
+from fieldapp.commands import coolers
+from fieldapp.commands.told import deviations_of, known
+from fieldapp.domain.bottles import in_order
+from fieldapp.domain.cards import is_card
 from fieldapp.domain.codes import normalise
 from fieldapp.domain.decision import Decision
 from fieldapp.domain.errors import RuleBroken, Unknown
 from fieldapp.domain.facts import (
     BottleReceived,
+    CoolerOpened,
+    EntryCorrected,
     EntryWithdrawn,
     Fact,
-    ResultReported,
-    ResultsLearned,
 )
-from fieldapp.domain.recorded import Reading
+from fieldapp.domain.recorded import Reading, Recorded
 from fieldapp.domain.timetext import format_utc
+from fieldapp.projections import facts, rounds
 from fieldapp.projections.pages import Pages, Row
-from fieldapp.projections.rounds import deviations_on
 
 OUTCOMES = ("accepted", "held", "refused")
 
@@ -34,9 +37,15 @@ CHECKS = {
     "label": "label",
     "low": "volume",
     "cap": "cap",
+    "record": "record",
+    "cooler": "cooler",
+    "hold": "held",
     "other": "other",
 }
 """What the clerk sees wrong, and the check of the receipt list that it fails.
+
+``cooler`` is a bottle that another cooler should hold; ``hold`` is the clerk's own word for one
+that is set aside without a fault of the list.
 
 Source: filed custody work plans, receipt checklist (trade 4, READ S73, S76, S101).
 """
@@ -57,19 +66,22 @@ class NumberTaken(RuleBroken):
     kind = "number-taken"
 
 
+class NumberIsCard(RuleBroken):
+    """A card of the counter was scanned where the laboratory's number belongs."""
+
+    kind = "number-is-card"
+
+
+class NothingToTakeBack(RuleBroken):
+    """The last thing that this person did at the counter is no receipt, or was taken back."""
+
+    kind = "nothing-to-take-back"
+
+
 class TooLateToTakeBack(RuleBroken):
     """The receipt is neither the latest of that person nor younger than ten seconds."""
 
     kind = "too-late-to-take-back"
-
-
-@dataclass(frozen=True, slots=True)
-class Said:
-    """The counter's answer: a word (``in``, ``hold``, ``stop``), why, and named values."""
-
-    word: str
-    why: str
-    deviations: tuple[Mapping[str, Any], ...] = ()
 
 
 def receive(
@@ -81,72 +93,145 @@ def receive(
     counted: bool = True,
     outcome: str = "accepted",
     reason: str = "",
-    check: str = "",
+    checks: Sequence[str] = (),
     done_at: str = "",
+    cooler: str = "",
+    arrived: str = "",
 ) -> Decision:
     """Receive one bottle; hold it where its record or the clerk's eye finds something.
 
-    ``outcome`` is the clerk's word; ``accepted`` becomes ``held`` where a deviation stands or a
-    ``check`` failed (R8). The same bottle again changes nothing (R14), and a plain second scan
-    lifts no hold and no refusal; ``counted`` says that its number was only counted up, so it is
-    no second sticker.
+    ``outcome`` is the clerk's word; ``accepted`` becomes ``held`` where a deviation stands or one
+    of the ``checks`` failed (R8). The same bottle again in the same cooler changes nothing (R14),
+    and a plain second scan lifts no hold and no refusal; a fault seen later corrects the receipt.
+    ``counted`` says that its number was only counted up, so it is no second sticker. ``cooler``
+    is the one open on the counter; ``arrived`` says what becomes of a bottle that another cooler
+    should hold: ``keep`` it here with a note, or set it ``aside``.
 
     Raises:
         BadCode: What was scanned is no code of ours.
-        ReasonMissing: The clerk holds or refuses without saying why.
+        OtherCooler: By its record it lies in another cooler, and nobody said what to do.
+        ReasonMissing: The clerk holds, refuses or keeps without saying why.
         NumberTaken: That laboratory number stands on another bottle.
+        NumberIsCard: The laboratory number is the text of a card of the counter.
     """
     code = normalise(bottle)
     row = pages.bottle(code)
-    settled = _standing(row, outcome, check) or _outcome(pages, row, outcome, reason, check)
-    if row and _in_already(row, settled, laboratory_number, counted):
-        return Decision((), {"bottle": code, "again": True, "outcome": row["outcome"]})
+    before = _standing(pages, row, cooler)
+    found = Checked(outcome, tuple(checks), reason)
+    if before is None:
+        cooler, strayed = coolers.place_of(pages, code, cooler, arrived)
+        found = found.strayed(arrived) if strayed else found
+    elif _elsewhere(before, cooler):
+        found = found.strayed("aside")
     laboratory = _laboratory(pages, row)
+    said = _settled(pages, row, before, found)
+    if before is not None and _is_again(before, cooler, "" if counted else laboratory_number):
+        return _said_anew(code, before, said)
     _free_number(pages, laboratory_number, code, laboratory)
     received = BottleReceived(
         bottle=code,
-        outcome=settled,
+        outcome=said.outcome,
+        cooler=cooler,
         laboratory=laboratory,
         laboratory_number=laboratory_number,
-        checks={CHECKS[check]: check} if check else None,
+        checks=said.failed or None,
         reason=reason,
         done_at=done_at,
     )
-    return Decision((received,), {"bottle": code, "again": False, "outcome": settled})
+    return Decision((received,), {"bottle": code, "again": False, "outcome": said.outcome})
 
 
-def said_of(pages: Pages, row: Row | None, *, again: bool = False) -> Said:
-    """Return what the counter is told of a bottle as its record stands now (R7, R8)."""
+@dataclass(frozen=True, slots=True)
+class Checked:
+    """What the clerk says of a bottle: the outcome, the checks that failed, a reason."""
+
+    outcome: str
+    checks: tuple[str, ...] = ()
+    reason: str = ""
+
+    @property
+    def failed(self) -> dict[str, str]:
+        """The receipt list's checks that are not as they should be."""
+        return {CHECKS[check]: check for check in self.checks}
+
+    @property
+    def plain(self) -> bool:
+        """Whether the clerk only scanned it."""
+        return self.outcome == "accepted" and not self.checks
+
+    def strayed(self, arrived: str) -> "Checked":
+        """Return the same of a bottle that lay in another cooler than its record says.
+
+        Raises:
+            ReasonMissing: It is kept here without a note.
+        """
+        if arrived == "keep" and not self.reason:
+            raise ReasonMissing(outcome=arrived)
+        outcome = "held" if arrived == "aside" and self.outcome == "accepted" else self.outcome
+        return replace(self, outcome=outcome, checks=(*self.checks, "cooler"))
+
+
+def _settled(pages: Pages, row: Row | None, before: Recorded | None, found: Checked) -> Checked:
+    """Return the outcome and checks to record, those that stand on the bottle already included."""
+    if found.outcome not in OUTCOMES:
+        raise Unknown(what="outcome", name=found.outcome)
+    if found.outcome != "accepted":
+        if not (found.reason or found.checks):
+            raise ReasonMissing(outcome=found.outcome)
+        outcome = found.outcome
+    elif before is not None and found.plain:
+        outcome = _receipt(before).outcome
+    else:
+        sound = known(row) and not (row and row["voided"])
+        seen = set(found.checks) - {"cooler"} or not sound or deviations_of(pages, row)
+        outcome = "held" if seen else "accepted"
+        if before is not None and _receipt(before).outcome == "refused":
+            outcome = "refused"  # a fault more lifts no refusal
+    earlier = tuple((_receipt(before).checks or {}).values()) if before is not None else ()
+    return replace(found, outcome=outcome, checks=tuple(dict.fromkeys((*earlier, *found.checks))))
+
+
+def _said_anew(code: str, before: Recorded, said: Checked) -> Decision:
+    """Return the answer to a second scan: nothing new, or the receipt corrected (R14).
+
+    The correction keeps when the bottle came; the former receipt stays, struck through.
+    """
+    old = _receipt(before)
+    same = said.outcome == old.outcome and said.failed == dict(old.checks or {})
+    if same:
+        return Decision((), {"bottle": code, "again": True, "outcome": old.outcome})
+    now = replace(
+        old, outcome=said.outcome, checks=said.failed or None, done_at=format_utc(before.done_at)
+    )
+    corrected = EntryCorrected(
+        of=before.hash, kind_=old.kind, data_=now.data(), reason=said.reason or old.reason
+    )
+    return Decision((corrected,), {"bottle": code, "again": False, "outcome": said.outcome})
+
+
+def _standing(pages: Pages, row: Row | None, cooler: str) -> Recorded | None:
+    """Return the receipt that a scan meets: of that cooler if there is one, else the latest."""
     if row is None or not row["received_at"]:
-        return Said("stop", "not-here")
-    if row["outcome"] == "refused":
-        return Said("stop", "refused-again" if again else "refused")
-    against = deviations_of(pages, row)
-    if row["outcome"] == "held":
-        return Said("hold", _why_held(row, against), against)
-    if again:
-        return Said("in", "again")
-    return Said("in", "in" if row["filled"] else "not-filled")
+        return None
+    found = in_order(facts.about(pages.db, f"bottle:{row['bottle']}", ("bottle.received",)))
+    same = [entry for entry in found if _receipt(entry).cooler == cooler]
+    latest = (same or found)[-1:]
+    return pages.fact(latest[0].hash, private=True) if latest else None
 
 
-def _why_held(row: Row, against: Sequence[Mapping[str, Any]]) -> str:
-    if not known(row):
-        return "unknown"
-    if row["voided"]:
-        return "voided"
-    return "deviation" if against else "held"
+def _receipt(entry: Recorded) -> BottleReceived:
+    assert isinstance(entry.fact, BottleReceived)
+    return entry.fact
 
 
-def known(row: Row | None) -> bool:
-    """Say whether this node holds the issue of that code."""
-    return row is not None and bool(row["printed_for"] or row["spare"])
+def _is_again(before: Recorded, cooler: str, sticker: str) -> bool:
+    """Say whether a scan is of the receipt that stands: same cooler, no other sticker."""
+    return not _elsewhere(before, cooler) and sticker in ("", _receipt(before).laboratory_number)
 
 
-def deviations_of(pages: Pages, row: Row | None) -> tuple[Mapping[str, Any], ...]:
-    """Return the deviations of its visit that bear on this bottle."""
-    if row is None or not row["visit"]:
-        return ()
-    return deviations_on(pages.visit(row["visit"]), row)
+def _elsewhere(before: Recorded, cooler: str) -> bool:
+    """Say whether a received bottle turns up in another cooler than it was received in."""
+    return bool(cooler and _receipt(before).cooler and cooler != _receipt(before).cooler)
 
 
 def next_number(number: str) -> str:
@@ -159,7 +244,7 @@ def next_number(number: str) -> str:
 
 
 def take_back(pages: Pages, reading: Reading, entry: str, *, latest: str) -> list[Fact]:
-    """Take a receipt back: until the next one, and for at least ten seconds (R45).
+    """Take a receipt or an opening back: until the next press, at least ten seconds (R45).
 
     ``latest`` names the latest receipt of the person who asks.
 
@@ -168,35 +253,27 @@ def take_back(pages: Pages, reading: Reading, entry: str, *, latest: str) -> lis
         TooLateToTakeBack: Another receipt followed and ten seconds are over.
     """
     found = pages.fact(entry)
-    if found is None or not isinstance(found.fact, BottleReceived):
+    if found is None or not isinstance(found.fact, BottleReceived | CoolerOpened):
         raise Unknown(what="receipt", name=entry[:8])
     if entry != latest and reading.since(found.at) > TAKE_BACK_WITHIN:
-        raise TooLateToTakeBack(bottle=found.fact.bottle)
+        raise TooLateToTakeBack()
     return [EntryWithdrawn(of=entry, reason="taken back at the counter")]
 
 
-def _standing(row: Row | None, outcome: str, check: str) -> str:
-    """Return the outcome that a plain scan finds standing, empty where the clerk says something."""
-    plain = outcome == "accepted" and not check
-    return str(row["outcome"]) if row and row["received_at"] and plain else ""
+def undo(pages: Pages, reading: Reading, *, person: str) -> Decision:
+    """Take back the last receipt of that person, as the undo card asks (R14).
 
+    A trigger that fires twice takes nothing more back: after the first the latest press is no
+    receipt.
 
-def _outcome(pages: Pages, row: Row | None, outcome: str, reason: str, check: str) -> str:
-    """Return the outcome to record: the clerk's own, or held where something stands against it."""
-    if outcome not in OUTCOMES:
-        raise Unknown(what="outcome", name=outcome)
-    if outcome != "accepted":
-        if not (reason or check):
-            raise ReasonMissing(outcome=outcome)
-        return outcome
-    sound = known(row) and not (row and row["voided"])
-    return "accepted" if sound and not check and not deviations_of(pages, row) else "held"
-
-
-def _in_already(row: Row, outcome: str, number: str, counted: bool) -> bool:
-    if not row["received_at"] or row["outcome"] != outcome:
-        return False
-    return counted or not number or number == row["laboratory_number"]
+    Raises:
+        NothingToTakeBack: The last thing that this person did here is no receipt.
+    """
+    last = rounds.latest_press_by(pages, person)
+    if last is None or not isinstance(last.fact, BottleReceived):
+        raise NothingToTakeBack()
+    taken = take_back(pages, reading, last.hash, latest=last.hash)
+    return Decision(taken, {"bottle": last.fact.bottle})
 
 
 def _laboratory(pages: Pages, row: Row | None) -> str:
@@ -206,60 +283,8 @@ def _laboratory(pages: Pages, row: Row | None) -> str:
 
 def _free_number(pages: Pages, number: str, code: str, laboratory: str) -> None:
     """Bar a number that the same laboratory gave to another bottle; two may count alike."""
+    if is_card(number):
+        raise NumberIsCard(number=number)
     for other in pages.by_number(number) if number else ():
         if other != code and _laboratory(pages, pages.bottle(other)) == laboratory:
             raise NumberTaken(number=number, other=other)
-
-
-class ReadRow(Protocol):
-    """One row of a results file that was read without a fault (``reading.results.ResultRow``)."""
-
-    def reported(self, file: str) -> ResultReported:
-        """Return the fact of this row; ``file`` is the SHA-256 of the file as it came."""
-
-
-def import_results(
-    pages: Pages,
-    reading: Reading,
-    rows: Iterable[ReadRow],
-    *,
-    file_sha: str,
-    round_id: str = "",
-    way: str = "file",
-) -> list[Fact]:
-    """Return the facts of a results file: that it came to hand, and each row not reported yet.
-
-    The same file again gives nothing. A changed value is reported beside the former one, and a
-    result for a bottle that was never received is kept: both become findings.
-    """
-    said: dict[str, set[tuple[str, ...]]] = {}
-    new: list[Fact] = []
-    for row in rows:
-        given = row.reported(file_sha)
-        if given.bottle not in said:
-            said[given.bottle] = _said_before(pages, given.bottle)
-        if _says(given) not in said[given.bottle]:
-            said[given.bottle].add(_says(given))
-            new.append(given)
-    if not new:
-        return []
-    learned_at = format_utc(reading.at)
-    return [ResultsLearned(way=way, learned_at=learned_at, file=file_sha, round=round_id), *new]
-
-
-def _said_before(pages: Pages, bottle: str) -> set[tuple[str, ...]]:
-    entries = pages.story(f"bottle:{bottle}")
-    gone = pages.gone(entry.hash for entry in entries)
-    return {
-        _says(entry.fact)
-        for entry in entries
-        if entry.hash not in gone and isinstance(entry.fact, ResultReported)
-    }
-
-
-def _says(given: ResultReported) -> tuple[str, ...]:
-    """Return what a row says, whichever file and row it stands in."""
-    return (
-        given.analyte, given.value, given.unit, given.qualifier, given.detection,
-        given.reporting, given.method, given.analysed_at, str(given.provisional),
-    )  # fmt: skip

@@ -1,8 +1,9 @@
 """The QR of a bottle code: eleven characters, always the same 21 modules a side."""
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 from fieldapp.domain import codes
+from fieldapp.domain.cards import CARDS, text_of
 
 # Version 1, level M, alphanumeric mode: 21 modules a side, room for 20 characters.
 # Source: ISO/IEC 18004, tables of symbol versions and capacities (from memory, check).
@@ -24,11 +25,25 @@ def modules(code: str) -> list[list[bool]]:
     Raises:
         BadCode: ``code`` is no bottle code. Nothing but a code may enter a QR on a bottle.
     """
+    return _symbol(codes.normalise(code))
+
+
+def card_modules(card: str) -> list[list[bool]]:
+    """Return the symbol of one of the counter's cards; it holds the card's text and nothing else.
+
+    Raises:
+        KeyError: ``card`` is none of ours.
+    """
+    if card not in CARDS:
+        raise KeyError(card)
+    return _symbol(text_of(card))
+
+
+def _symbol(text: str) -> list[list[bool]]:
     from qrcode import QRCode, util
     from qrcode.constants import ERROR_CORRECT_M
 
     symbol = QRCode(version=VERSION, error_correction=ERROR_CORRECT_M, border=0, mask_pattern=MASK)
-    text = codes.normalise(code)
     symbol.add_data(util.QRData(text, mode=util.MODE_ALPHA_NUM))
     symbol.make(fit=False)
     return [[bool(module) for module in row] for row in symbol.get_matrix()]
@@ -40,7 +55,12 @@ def dark_runs(code: str) -> Iterator[tuple[int, int, int]]:
     Columns and rows count from 0 at the outer edge of the quiet zone, so a symbol drawn in a
     box of ``OUTER_MODULES`` a side keeps its distance from whatever stands beside the box.
     """
-    for number, row in enumerate(reversed(modules(code))):
+    yield from runs(modules(code))
+
+
+def runs(rows: Sequence[Sequence[bool]]) -> Iterator[tuple[int, int, int]]:
+    """Yield the dark runs of those rows as ``dark_runs`` does."""
+    for number, row in enumerate(reversed(rows)):
         column = 0
         while column < SIDE_MODULES:
             length = 0

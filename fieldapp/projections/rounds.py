@@ -198,6 +198,20 @@ def latest_receipt_by(pages: Pages, person: str) -> Recorded | None:
     return pages.fact(row[0]) if row else None
 
 
+def latest_press_by(pages: Pages, person: str) -> Recorded | None:
+    """Return the last thing that this person did at the counter: receive, open, take back.
+
+    Nothing where that was taken back itself.
+    """
+    row = pages.db.execute(
+        "SELECT f.hash FROM p_fact f WHERE f.by = ? AND f.kind IN"
+        " ('bottle.received', 'cooler.opened', 'entry.withdrawn') ORDER BY f.rowid DESC LIMIT 1",
+        (person,),
+    ).fetchone()
+    found = pages.fact(row[0]) if row else None
+    return None if found is None or pages.gone([found.hash]) else found
+
+
 def latest_number_by(pages: Pages, person: str) -> str:
     """Return the last laboratory number that this person gave a bottle, empty for none yet."""
     row = pages.db.execute(

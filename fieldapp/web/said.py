@@ -27,8 +27,14 @@ CHECKS = {
     "label": N_("its label cannot be read"),
     "low": N_("too little water"),
     "cap": N_("its cap is loose or missing"),
+    "record": N_("no record came with it"),
+    "cooler": N_("its record names another cooler"),
+    "hold": N_("set aside by the clerk"),
     "other": N_("something else"),
 }
+
+SEEN = {check: says for check, says in CHECKS.items() if check not in ("cooler", "hold")}
+"""What a clerk may choose from a list: not the checks that the counter finds by itself."""
 
 VOIDED = {
     "broken": N_("broken"),

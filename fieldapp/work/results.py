@@ -4,7 +4,7 @@ import base64
 from collections.abc import Callable
 from typing import Any
 
-from fieldapp.commands import bench
+from fieldapp.commands import results
 from fieldapp.domain.decision import Decision
 from fieldapp.domain.errors import RuleBroken
 from fieldapp.domain.recorded import Reading
@@ -46,7 +46,7 @@ def _decide(pages: Pages, reading: Reading, found: ResultsFile) -> Decision:
         for given in found.rows
         if (row := pages.bottle(given.bottle)) is not None and row["round"]
     }
-    facts = bench.import_results(
+    facts = results.import_results(
         pages,
         reading,
         found.rows,

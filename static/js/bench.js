@@ -4,12 +4,25 @@
 
 const ANSWER_WITHIN_MS = 8000
 const TRY_AGAIN_MS = 1500
-const TONES_HZ = { in: [1320], hold: [660, 660], stop: [220, 220, 220], number: [990] }
+const TONES_HZ = {
+  in: [1320], hold: [660, 660], stop: [220, 220, 220], number: [990], card: [990, 1180], back: [880, 660],
+}
 const TONE_S = 0.12
+const CARD = /^\s*counter\b/i
 
 export function startCounter(root = document) {
   const form = root.querySelector("form[data-counter]")
   if (form) new Counter(form, root).start()
+  const seals = root.querySelector("[data-seals]")
+  if (seals) seals.addEventListener("keydown", parted)
+}
+
+// A scanner ends each seal with Enter, and a cooler may bear several: Enter parts them.
+function parted(event) {
+  if (event.key !== "Enter") return
+  event.preventDefault()
+  const field = event.target
+  if (field.value.trim() && !/,\s*$/.test(field.value)) field.value += ", "
 }
 
 class Counter {
@@ -26,6 +39,7 @@ class Counter {
 
   start() {
     this.form.addEventListener("submit", event => this.take(event))
+    this.root.querySelector("#answer").addEventListener("submit", event => this.takeWay(event))
     this.form.addEventListener("change", event => this.chosen(event))
     addEventListener("beforeunload", event => this.keepOpen(event))
     this.root.addEventListener("keydown", event => this.catchStrayKeys(event))
@@ -37,15 +51,47 @@ class Counter {
     event.preventDefault()
     event.stopImmediatePropagation()
     const fields = new FormData(this.form)
-    if (!String(fields.get("bottle")).trim()) return
-    if (fields.get("numbering") === "sticker" && !String(fields.get("laboratory_number")).trim()) {
+    const scanned = String(fields.get("bottle")).trim()
+    if (!scanned || this.chooseWay(scanned)) return
+    const unnumbered = !String(fields.get("laboratory_number")).trim()
+    if (fields.get("numbering") === "sticker" && unnumbered && !CARD.test(scanned)) {
       this.number.focus()
       return
     }
-    this.waiting.push({ fields, typed: this.number.value !== this.number.defaultValue })
+    this.queue(fields, this.number.value !== this.number.defaultValue)
     this.clear()
+  }
+
+  queue(fields, typed) {
+    this.waiting.push({ fields, typed })
     this.count()
     this.work()
+  }
+
+  // A stop that asks what becomes of a bottle: 1 or 2 and Enter answers it without a mouse.
+  chooseWay(scanned) {
+    const asks = this.root.querySelector("#answer form[data-ways]")
+    const button = asks?.querySelector(`[data-key="${CSS.escape(scanned)}"]`)
+    if (!button) return false
+    this.field.value = ""
+    const note = asks.querySelector("[data-note]")
+    if (button.value === "keep" && !note.value.trim()) note.focus()
+    else asks.requestSubmit(button)
+    return true
+  }
+
+  takeWay(event) {
+    event.preventDefault()
+    event.stopImmediatePropagation()
+    const asks = event.target
+    const fields = new FormData(asks, event.submitter ?? asks.querySelector("[data-key]"))
+    if (fields.get("arrived") === "keep" && !String(fields.get("reason")).trim()) {
+      asks.querySelector("[data-note]").focus()
+      return
+    }
+    asks.closest(".told").remove()
+    this.queue(fields, fields.get("numbering") !== "counted" || !this.number.defaultValue)
+    this.focus()
   }
 
   async work() {
@@ -55,6 +101,7 @@ class Counter {
       const scan = this.waiting[0]
       const { fields } = scan
       fields.set("act", this.form.elements.namedItem("act").value)
+      if (!fields.has("arrived")) fields.set("cards", this.form.elements.namedItem("cards").value)
       if (fields.get("numbering") === "counted" && !scan.typed) {
         fields.set("laboratory_number", this.number.defaultValue)
       }
@@ -88,6 +135,8 @@ class Counter {
     const word = answer.word || "stop"
     this.tell(answer)
     if (answer.received) this.root.querySelector("#received").innerHTML = answer.received
+    if (answer.tally !== undefined) this.root.querySelector("#tally").innerHTML = answer.tally
+    if (answer.cards !== undefined) this.form.elements.namedItem("cards").value = answer.cards
     if (answer.act) this.form.elements.namedItem("act").value = answer.act
     if (answer.number !== undefined && fields.get("numbering") === "counted") this.next(answer.number)
     beep(TONES_HZ[word] ?? TONES_HZ.stop)

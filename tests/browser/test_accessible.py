@@ -19,6 +19,7 @@ NOT_PAGES = {
     "kitchen.clock": "a line of text for the countdown",
     "static_file": "styles and scripts",
     "replication.door": "the door for devices, by POST",
+    "bench.cards": "a page to print, as PDF",
     "desk.find": "redirects to a bottle or a site",
 }
 ROWS = {
@@ -31,6 +32,8 @@ ROWS = {
     "kitchen.done": ("tablet", "/kitchen/visits/V-0401/done"),
     "kitchen.last_use": ("tablet", "/kitchen/visits/V-0401/last-use"),
     "bench.index": ("central", "/bench/"),
+    "bench.open_form": ("central", "/bench/open"),
+    "bench.which": ("central", "/bench/which?seals=88214&whole=whole&count=17"),
     "desk.index": ("central", "/desk/"),
     "desk.one_round": ("central", "/desk/rounds/quillhaven-2027-05"),
     "desk.one_bottle": ("central", "/desk/bottles/{bottle}"),

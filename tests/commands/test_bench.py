@@ -4,7 +4,8 @@ from dataclasses import replace
 
 import pytest
 
-from fieldapp.commands import bench
+from fieldapp.commands import bench, told
+from fieldapp.commands import results as imports
 from fieldapp.domain import codes
 from fieldapp.domain.codes import BadCode
 from fieldapp.domain.errors import Unknown
@@ -13,19 +14,19 @@ from fieldapp.projections import rounds
 from tests.counter import Node
 
 
-def receive(node: Node, code: str, **given: str) -> str:
+def receive(node: Node, code: str, **given: object) -> str:
     """Receive a code and return the counter's answer as ``word/why``."""
-    told: dict[str, object] = {}
+    answered: dict[str, object] = {}
 
     def decide(pages, reading):
         decided = bench.receive(pages, reading, bottle=code, **given)
-        told.update(decided.answer)
+        answered.update(decided.answer)
         return decided
 
     node.decide(decide)
     with node.pages() as pages:
-        row = pages.bottle(told["bottle"])
-        said = bench.said_of(pages, row, again=bool(told["again"]))
+        row = pages.bottle(answered["bottle"])
+        said = told.said_of(pages, row, again=bool(answered["again"]))
     return f"{said.word}/{said.why}"
 
 
@@ -90,7 +91,7 @@ def test_a_leak_seen_after_the_first_scan_is_recorded_beside_it(node):
     node.fill("Q-0401")
     code = node.codes["Q-0401"]
     receive(node, code)
-    assert receive(node, code, outcome="refused", check="leaks") == "stop/refused"
+    assert receive(node, code, outcome="refused", checks=("leaks",)) == "stop/refused"
     assert receipts(node, code) == 2
     assert node.bottle("Q-0401")["outcome"] == "refused"
 
@@ -137,8 +138,8 @@ def test_a_bottle_with_a_deviation_is_held_before_analysis(node):
     assert receive(node, node.codes["Q-0401"]) == "hold/deviation"
     assert node.bottle("Q-0401")["outcome"] == "held"
     with node.pages() as pages:
-        told = bench.said_of(pages, pages.bottle(node.codes["Q-0401"]))
-    assert "pre-flush" in [found["kind"] for found in told.deviations]
+        said = told.said_of(pages, pages.bottle(node.codes["Q-0401"]))
+    assert "pre-flush" in [found["kind"] for found in said.deviations]
 
 
 def test_a_deviation_of_one_visit_does_not_hold_another_s_bottle(node):
@@ -157,7 +158,7 @@ def test_a_deviation_that_names_no_draw_does_not_bear_on_the_blank():
 
 def test_a_fault_that_is_seen_holds_the_bottle(node):
     node.fill("Q-0401")
-    assert receive(node, node.codes["Q-0401"], check="low") == "hold/held"
+    assert receive(node, node.codes["Q-0401"], checks=("low",)) == "hold/held"
     with node.pages() as pages:
         fact = pages.story(f"bottle:{node.codes['Q-0401']}")[-1].fact
     assert fact.checks == {"volume": "low"}
@@ -251,7 +252,7 @@ def results(node: Node, *levels: tuple[str, str], sha: str = "a" * 64) -> tuple[
         for n, (visit, value) in enumerate(levels, start=2)
     ]
     return node.decide(
-        lambda pages, reading: bench.import_results(
+        lambda pages, reading: imports.import_results(
             pages, reading, rows, file_sha=sha, round_id="spring"
         )
     )
