@@ -1,0 +1,1 @@
+"""Replicates append-only signed logs between nodes and knows nothing of what they say."""
