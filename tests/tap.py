@@ -18,7 +18,7 @@ from fieldapp.domain.protocols import find
 from fieldapp.domain.protocols.standing import Standing
 from tests.counter import Node
 
-VISIT, OTHER, PAIR, BLANK = "Q-0401", "Q-0402", "Q-0404", "Q-0405"
+VISIT, OTHER, PAIR, BLANK, HERE = "Q-0401", "Q-0402", "Q-0404", "Q-0405", "Q-0406"
 SAMPLER = "sampler-1"
 
 
@@ -74,6 +74,23 @@ class Tap(Node):
             ),
         )  # fmt: skip
         return issued
+
+    def thirty(self) -> dict[int, str]:
+        """Plan a visit of two litres after a stand of thirty minutes; returns the codes."""
+        draws = [{"draw": draw, "purpose": "investigation"} for draw in (1, 2)]
+        return self.add(HERE, "thirty-minute", *draws)
+
+    def until(self, visit: str, *kinds: str) -> None:
+        """Open the visit and answer what it asks until one of those acts is due."""
+        while (due := self.standing(visit).due).kind not in kinds:
+            if due.kind == "open":
+                self.press(kitchen.open_visit, visit)
+            elif due.question == "consent":
+                self.press(kitchen.agree, visit, how="spoken")
+            elif due.kind == "ask":
+                self.press(kitchen.answer, visit, question=due.question, answer=due.answers[0])
+            else:
+                raise AssertionError(f"{due.kind} is due, not one of {kinds}")
 
     def spare(self) -> str:
         code = codes.new_code()

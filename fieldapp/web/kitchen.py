@@ -87,7 +87,8 @@ def last_use(visit: str) -> Answer:
     found = shown_as.gather(visit)
     if not request.args.get("exact"):
         choices = shown_as.last_use_choices(found["zone"])
-        return _page("last-use", found, again="yes", says="", sent={}, **choices)
+        lately = shown_as.lately(found["zone"])
+        return _page("last-use", found, again="yes", says="", sent={}, lately=lately, **choices)
     try:
         form = forms.LastUseForm(unknown=EXCLUDE).load(request.args.to_dict())
         told = _read_back(form, found["zone"])
@@ -195,6 +196,19 @@ def run(visit: str) -> Answer:
     return act(visit, forms.WhenForm, running.end_run if ends else running.start_run)
 
 
+@bp.post("/visits/<visit>/ran")
+def ran(visit: str) -> Answer:
+    """Record a run to waste as it happened."""
+    form = load(forms.RanForm)
+    zone = shown_as.zone_of(visit)
+
+    def decide(p: Pages, r: Reading) -> Sequence[Fact]:
+        opened, shut = (forms.moment_of(form, name, zone) for name in ("opened", "shut"))
+        return running.run_happened(p, r, visit, opened=opened, shut=shut, reason=form["reason"])
+
+    return press(visit, decide)
+
+
 @bp.post("/visits/<visit>/fill")
 def fill(visit: str) -> Answer:
     """Record one filling, or all of a run as the tap is closed."""
@@ -274,7 +288,8 @@ def _page(name: str, found: Mapping[str, Any], **more: Any) -> str:
 
 def _board(row: Any, others: Sequence[Any]) -> str:
     stops = shown_as.stops_of(row["route"])
-    ring = shown_as.ring_of(stops)
+    rings = shown_as.rings_of(stops)
+    ring = rings[0] if rings else None
     g.zone = row["zone"] or "UTC"
     return render_template(
         "kitchen/route.html",
@@ -284,6 +299,7 @@ def _board(row: Any, others: Sequence[Any]) -> str:
         others=others,
         going=shown_as.next_of(stops),
         ring=ring,
+        rings=rings,
         stand_there=shown_as.ring_before(ring["earliest"]) if ring else None,
         today=shown_as.today(g.zone),
         spoken=spoken,

@@ -129,6 +129,15 @@ class DoneForm(WhenForm):
     reason = fields.String(load_default="", validate=NOTE)
 
 
+class RanForm(Schema):
+    """When the tap ran to waste, where it was not pressed at the time."""
+
+    opened_local = fields.String(load_default="", validate=LOCAL)
+    shut_local = fields.String(load_default="", validate=LOCAL)
+    fold = fields.String(load_default="", validate=FOLD)
+    reason = fields.String(load_default="", validate=NOTE)
+
+
 class SwapForm(WhenForm):
     """Another bottle in the place of one that will hold no water."""
 

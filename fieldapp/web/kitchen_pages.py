@@ -12,7 +12,15 @@ from fieldapp.commands import drawing, kitchen, last_use
 from fieldapp.commands.asked import latest, planned, standing_of
 from fieldapp.domain.bottles import in_order
 from fieldapp.domain.deviations import stated_kinds
-from fieldapp.domain.facts import TapOpened, VisitClosed, VisitLeft, VisitOpened, WaterUsed
+from fieldapp.domain.facts import (
+    RunEnded,
+    RunStarted,
+    TapOpened,
+    VisitClosed,
+    VisitLeft,
+    VisitOpened,
+    WaterUsed,
+)
 from fieldapp.domain.protocols.standing import Standing
 from fieldapp.domain.recorded import Recorded
 from fieldapp.domain.timetext import chips
@@ -24,6 +32,9 @@ from fieldapp.web.rail import rail
 MINUTE = timedelta(minutes=1)
 BEFORE_RING = timedelta(minutes=5)
 """How long before the earliest draw to stand at the door. Our choice."""
+
+LATELY = (0, 2, 5, 10, 15, 20, 30)
+"""Minutes ago at which water may have run again."""
 
 RESTS = ("over", "open")
 """Steps on which no bottle is at hand, so none is drawn large."""
@@ -41,7 +52,8 @@ def show_visit(visit: str, *, says: str = "", sent: Mapping[str, str] | None = N
     """Return the page of the step that is due; with ``says`` above it where a rule was broken."""
     found = gather(visit)
     due = found["due"]
-    waits = due.kind == "wait" and request.args.get("wait")
+    chosen = due.here or request.args.get("wait")
+    waits = due.kind == "wait" and due.until is not None and chosen
     template = "waiting" if waits or _only_waits(found["told"]) else due.kind
     if due.kind == "last-use":
         found |= last_use_choices(found["zone"])
@@ -75,6 +87,7 @@ def gather(visit: str) -> dict[str, Any]:
         "use_says": _use_says(recorded, zone),
         "left_entry": latest(recorded, VisitLeft),
         "expected": _expected(visit, told),
+        "ran_short": _ran_short(told, recorded),
         "until_says": _up(due.until) if due.until else ("", ""),
         "left_says": _up(told.earliest_draw) if told.earliest_draw else ("", ""),
         "meanwhile": _meanwhile(plan.route, visit) if due.kind == "wait" else None,
@@ -125,6 +138,20 @@ def last_use_choices(zone: str) -> dict[str, Any]:
     }
 
 
+def lately(zone: str) -> list[dict[str, Any]]:
+    """Return chips for a use of water a moment ago, to the minute: what a short stand asks for."""
+    now = reading().at
+    offered = {one.at for one in chips(now, zone)}
+    made = []
+    for minutes in LATELY:
+        at = now - minutes * MINUTE
+        if at in offered:
+            continue
+        says = spoken.ago(minutes)
+        made.append({"at": at, "says": says, "local": f"{at.astimezone(ZoneInfo(zone)):%H:%M}"})
+    return made
+
+
 def stops_of(route: str) -> list[dict[str, Any]]:
     """Return the stops of a route in their order, each with where it stands now."""
     return [_stop(row) for row in pages().visits(route=route)]
@@ -141,10 +168,10 @@ def next_of(stops: Sequence[Mapping[str, Any]]) -> Mapping[str, Any] | None:
     return None
 
 
-def ring_of(stops: Sequence[Mapping[str, Any]]) -> Mapping[str, Any] | None:
-    """Return the waiting stop whose earliest draw comes first."""
+def rings_of(stops: Sequence[Mapping[str, Any]]) -> list[Mapping[str, Any]]:
+    """Return the waiting stops, the one whose earliest draw comes first before the others."""
     waiting = [one for one in stops if one["state"] == "left" and one["earliest"]]
-    return min(waiting, key=lambda one: one["earliest"], default=None)
+    return sorted(waiting, key=lambda one: str(one["earliest"]))
 
 
 def different_choices(found: Mapping[str, Any]) -> dict[str, Any]:
@@ -164,8 +191,11 @@ def _stop(row: Row) -> dict[str, Any]:
     now = reading().at
     earliest = row["earliest_draw"]
     state = row["state"]
-    if state == "left" and (not earliest or datetime.fromisoformat(earliest) <= now):
-        state = "ready" if earliest else "left"
+    # a visit in which the water stands waits, whether or not anybody pressed that they left
+    waits = state == "left" or (state == "open" and row["due"] == "wait" and earliest)
+    if waits:
+        ready = bool(earliest) and datetime.fromisoformat(earliest) <= now
+        state = "ready" if ready else "left"
     protocol = pages().protocol(row["sha256"])
     plan = pages().plan(row["visit"])
     left = latest(pages().recorded(row["visit"]), VisitLeft) if row["state"] == "left" else None
@@ -201,6 +231,14 @@ def _stand_says(told: Standing, recorded: Sequence[Recorded]) -> str:
 def _use_says(recorded: Sequence[Recorded], zone: str) -> str:
     used = latest(recorded, WaterUsed)
     return spoken.last_use(used, zone, reading().at) if used else ""
+
+
+def _ran_short(told: Standing, recorded: Sequence[Recorded]) -> timedelta | None:
+    """Return how long the last run to waste took, where it has to run once more."""
+    started, ended = (latest(recorded, kind, step=told.due.step) for kind in (RunStarted, RunEnded))
+    if told.due.kind != "run" or told.due.since or not (started and ended):
+        return None
+    return ended.done_at - started.done_at
 
 
 def _expected(visit: str, told: Standing) -> list[str]:

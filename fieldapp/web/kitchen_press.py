@@ -67,7 +67,7 @@ def refused(visit: str, fault: RuleBroken) -> Answer:
     says, sent = spoken.broken(fault), request.form.to_dict()
     if isinstance(fault, drawing.WrongBottle | drawing.AlreadyFilled):
         return wrong_bottle(visit, says, fault.values), UNPROCESSABLE
-    if request.path.endswith("/done"):
+    if request.path.endswith(("/done", "/ran")):
         return done(visit, sent, says), UNPROCESSABLE
     if request.path.endswith(("/different", "/swap")):
         return different(visit, says), UNPROCESSABLE
@@ -83,7 +83,9 @@ def different(visit: str, says: str = "") -> str:
 def done(visit: str, sent: Mapping[str, str], says: str = "") -> str:
     """Return the page that asks what was done already."""
     found = shown_as.gather(visit)
-    return _page("done", found, says=says, sent=sent, **shown_as.different_choices(found))
+    runs = found["due"].kind == "run" and not sent.get("draws")
+    page = "ran" if runs else "done"
+    return _page(page, found, says=says, sent=sent, **shown_as.different_choices(found))
 
 
 def wrong_bottle(visit: str, says: str, fault: Mapping[str, Any]) -> str:

@@ -124,6 +124,7 @@ DEVIATIONS = {
     "low-flow": N_("Only a thin stream"),
     "narrow-mouth": N_("Narrow bottle"),
     "interrupted-flow": N_("The stream was interrupted"),
+    "run-short": N_("Ran to waste too short"),
     "wrong-bottle": N_("A bottle of elsewhere"),
     "wrong-order": N_("Filled in another order"),
     "other": N_("Something else"),
@@ -214,6 +215,11 @@ def stand(told: Standing, teller: str = "") -> str:
     if told.stand.basis == "stated" and teller:
         basis = words.gettext("{basis} by {who}").format(basis=basis, who=of(TELLERS, teller))
     return f"{length}, {basis}"
+
+
+def ago(minutes: int) -> str:
+    """Return how long ago in words, ``just now`` for nothing."""
+    return words.gettext("{n} min ago").format(n=minutes) if minutes else words.gettext("just now")
 
 
 def last_use(entry: Recorded, zone: str, now: datetime) -> str:

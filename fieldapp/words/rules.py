@@ -61,6 +61,7 @@ RULES: dict[str, str] = {
     "no-such-draw": N_("This visit has no draw {draw}."),
     "crossed-times": N_("The first time is later than the second. Exchange them."),
     "nothing-said": N_("Choose when water last ran, or say that nobody knows."),
+    "run-unsaid": N_("Say when the tap was opened and when it was shut."),
     "reason-missing": N_(
         "Say why in a few words: a bottle is never held or refused without a reason."
     ),
