@@ -9,13 +9,18 @@ from typing import Any
 
 from fieldapp import identity
 from fieldapp.domain import codes
+from fieldapp.domain.custody import set_hash
 from fieldapp.domain.facts import (
     BottleFilled,
     BottleIssued,
+    BottlePacked,
     BottleReceived,
     BottleSet,
+    CoolerOpened,
+    CoolerSealed,
     DeviationStated,
     Fact,
+    HandoverOffered,
     OccupantAgreed,
     PersonListed,
     ProtocolKept,
@@ -140,6 +145,31 @@ class Node:
             VisitSigned(visit=visit, who="sampler", how="typed", name="Imaginary Sampler"),
             VisitClosed(visit=visit, outcome="done"),
             by="sampler-1",
+        )
+
+    def pack(
+        self, cooler: str, box: str, visits: Sequence[str], *, seals: Sequence[str] = ()
+    ) -> None:
+        """Pack the bottles of those visits into a cooler, seal and relinquish it."""
+        for visit in visits:
+            self.record(
+                BottlePacked(bottle=self.codes[visit], cooler=cooler, route="north", box=box),
+                by="sampler-1",
+            )
+        if not seals:
+            return
+        count = len(visits)
+        held = {"cooler": cooler, "route": "north", "seals": tuple(seals), "count": count}
+        self.record(CoolerSealed(**held, box=box), by="sampler-1")
+        codes_in = [self.codes[visit] for visit in visits]
+        self.record(HandoverOffered(**held, set=set_hash(codes_in)), by="sampler-1")
+
+    def open(self, cooler: str, count: int, *seals: str, whole: bool = True) -> None:
+        """Open a cooler at the counter, as seen."""
+        self.record(
+            CoolerOpened(
+                cooler=cooler, seal_read=seals, whole=whole, count=count, laboratory="bench-lab"
+            )
         )
 
     def deviate(self, visit: str) -> None:
