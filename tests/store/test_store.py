@@ -13,14 +13,12 @@ import sqlite_utils
 from fieldapp.clock import ScriptedClock, SystemClock, write_script
 from fieldapp.domain import facts
 from fieldapp.store import BALLAST, DAMAGED, DATABASE, Store
-from sync.entry import Realm
 from sync.errors import FolderHeld, Unsuitable
-from sync.tables import SCHEMA_VERSION
 from sync.folder import read_anchors
+from sync.tables import SCHEMA_VERSION
 from tests import nodes
 from tests.nodes import bodies, count, press
 
-REALM = Realm("tapwitness")
 VISIT = "V-0401"
 
 
