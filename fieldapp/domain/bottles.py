@@ -70,17 +70,17 @@ class BottleStanding:
 
     @property
     def purpose(self) -> str:
-        """Why it is drawn: as issued, else as bound; fixed before it is drawn (R5)."""
-        if self.plan and self.plan.purpose:
-            return self.plan.purpose
-        return self.binding.purpose if self.binding else ""
+        """Why it is drawn: as bound when it was set, else as issued; fixed before the draw (R5)."""
+        if self.binding and self.binding.purpose:
+            return self.binding.purpose
+        return self.plan.purpose if self.plan else ""
 
     @property
     def kind(self) -> str:
-        """First-draw, sequential, blank … as issued, else as bound."""
-        if self.plan and self.plan.kind_:
-            return self.plan.kind_
-        return self.binding.kind_ if self.binding else ""
+        """First-draw, sequential, blank … as bound when it was set, else as issued."""
+        if self.binding and self.binding.kind_:
+            return self.binding.kind_
+        return self.plan.kind_ if self.plan else ""
 
     @property
     def spare(self) -> bool:

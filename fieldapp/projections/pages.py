@@ -93,7 +93,7 @@ class Pages:
 
     def plan(self, visit: str) -> VisitPlanned | None:
         """Return the plan in force of a visit."""
-        return summaries.standing_plan(facts.about(self.db, f"visit:{visit}", ("visit.planned",)))
+        return summaries.plan_of(self.db, visit, facts.about(self.db, f"visit:{visit}"))
 
     def recorded(self, visit: str, *, gone: bool = False) -> list[Recorded]:
         """Return what is recorded of a visit."""

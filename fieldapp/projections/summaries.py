@@ -174,7 +174,7 @@ def tell_visit(db: sqlite3.Connection, visit: str) -> None:
     """Write the visit's row: where it stands after its latest entry, and its findings."""
     entries = about(db, f"visit:{visit}")
     db.execute("DELETE FROM p_visit WHERE visit = ?", (visit,))
-    plan = standing_plan(entries)
+    plan = plan_of(db, visit, entries)
     if plan is None:
         write_findings(db, f"visit:{visit}", "", "", [])
         return
@@ -192,10 +192,19 @@ def _voided(db: sqlite3.Connection, bottle: str) -> bool:
     return bool(about(db, f"bottle:{bottle}", ("bottle.voided",)))
 
 
-def standing_plan(entries: Iterable[Recorded]) -> VisitPlanned | None:
-    """Return the plan in force among a visit's entries: the latest one written."""
-    plans = [e.fact for e in in_order(living(entries, "visit.planned"))]
-    return plans[-1] if plans and isinstance(plans[-1], VisitPlanned) else None
+def plan_of(
+    db: sqlite3.Connection, visit: str, entries: Iterable[Recorded]
+) -> VisitPlanned | None:
+    """Return the plan in force of a visit: the latest one written.
+
+    A visit that was begun keeps its last plan though the round dropped it since (R20).
+    """
+    known = list(entries)
+    plans = living(known, "visit.planned")
+    if not plans and any(entry.fact.place == "kitchen" for entry in known):
+        plans = about(db, f"visit:{visit}", ("visit.planned",), gone=True)
+    found = in_order(plans)[-1].fact if plans else None
+    return found if isinstance(found, VisitPlanned) else None
 
 
 def stand_of_visit(
