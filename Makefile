@@ -13,7 +13,7 @@ help: ## Print these targets
 .venv/.test: pyproject.toml tools/setup.sh
 	@tools/setup.sh test
 
-demo: .venv/.run ## Rehearse the shipped round, then serve its central and tablet; Ctrl-C ends both
+demo: .venv/.run ## Show an invented town: central, a tablet, and a line between them to cut; Ctrl-C ends it
 	@$(PY) -m fieldapp.cli demo
 
 serve: .venv/.run ## Run the node of your own data folder

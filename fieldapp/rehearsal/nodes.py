@@ -9,7 +9,7 @@ from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from types import TracebackType
 
-from fieldapp.clock import read_script, write_script
+from fieldapp.clock import SCRIPT, read_script, write_script
 from fieldapp.domain.timetext import zone_named
 from fieldapp.running import read_running
 from fieldapp.store import Store
@@ -28,6 +28,14 @@ class Time:
     zone: str
     folders: list[Path] = field(default_factory=list)
     shift: timedelta = timedelta(0)
+
+    @classmethod
+    def of(cls, zone: str, folders: list[Path]) -> "Time":
+        """Return the time that those folders' nodes read already."""
+        shift_ms, _ = read_script(folders[0] / SCRIPT)
+        time = cls(zone, list(folders), timedelta(milliseconds=shift_ms))
+        time._write()
+        return time
 
     def now(self) -> datetime:
         """Return the scripted moment."""
@@ -91,8 +99,18 @@ class Process:
         self._ready.wait(READY_S)
         running = read_running(self.folder)
         if running is None:
-            raise NotStarted(f"The node of {self.folder} did not start: {' '.join(self._said)}")
+            raise NotStarted(f"The node of {self.folder} did not start: {self.said}")
         return running.url
+
+    @property
+    def alive(self) -> bool:
+        """Say whether it runs."""
+        return self._process.poll() is None
+
+    @property
+    def said(self) -> str:
+        """Return its last words."""
+        return " ".join(self._said)
 
     def end(self) -> None:
         """End this process, by its own id, and wait until the folder is closed."""
@@ -133,6 +151,3 @@ class Process:
 
 def _ms(length: timedelta) -> int:
     return int(length.total_seconds() * 1000)
-
-
-__all__ = ["NotStarted", "Process", "Time", "make_node", "read_script"]

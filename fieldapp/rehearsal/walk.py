@@ -4,10 +4,7 @@ Every press goes through a page of a node in its own process, over HTTP, as a pe
 """
 
 import base64
-import contextlib
-import shutil
-import tempfile
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from datetime import timedelta
 from pathlib import Path
 
@@ -19,6 +16,7 @@ from fieldapp.reading.rounds import RoundFile, read_round
 from fieldapp.rehearsal.account import Account, account_of
 from fieldapp.rehearsal.browser import Browser, Trouble
 from fieldapp.rehearsal.day import Script
+from fieldapp.rehearsal.folders import folder_for, make_room
 from fieldapp.rehearsal.nodes import NotStarted, Process, Time, make_node
 from fieldapp.rehearsal.script import read_script
 from fieldapp.rehearsal.way import Codes as Codes
@@ -26,8 +24,7 @@ from fieldapp.rehearsal.way import Way, begins_at, choose
 from fieldapp.running import hand_over
 from fieldapp.store import Store
 from fieldapp.work.faults import said_of
-from sync.errors import SyncError, Unsuitable
-from sync.folder import FolderLock
+from sync.errors import SyncError
 
 CLEAN_DAY = "clean-day.json"
 BEFORE_THE_DAY = timedelta(minutes=20)
@@ -52,38 +49,9 @@ def rehearse(
     data = file.read_bytes()
     planned = read_round(data, file.name)
     script = read_script(data, file.name, planned)
-    with _folder(keep) as folder:
+    with folder_for(keep, "rehearsal-") as folder:
+        make_room(folder)
         return _Walk(planned, script, file.name, data, folder, say).run()
-
-
-@contextlib.contextmanager
-def _folder(keep: Path | None) -> Iterator[Path]:
-    if keep is not None:
-        keep.mkdir(parents=True, exist_ok=True)
-        earlier = [one for one in (keep / "central", *keep.glob("tablet*")) if one.exists()]
-        for folder in earlier:
-            _require_rehearsal(folder)
-        for folder in earlier:
-            shutil.rmtree(folder)
-        yield keep
-        return
-    with tempfile.TemporaryDirectory(prefix="rehearsal-") as name:
-        yield Path(name)
-
-
-def _require_rehearsal(folder: Path) -> None:
-    """Let a folder be replaced only where a rehearsal made it and no node holds it: never records.
-
-    Raises:
-        Unsuitable, FolderHeld: Something else lies there, or its node runs.
-    """
-    if not (identity.exists(folder) and identity.read(folder).scripted):
-        raise Unsuitable(
-            f"{folder} is there and no rehearsal made it, so it is left as it is. "
-            "Name another folder for --keep."
-        )
-    with FolderLock(folder):
-        pass
 
 
 class _Walk:
