@@ -166,11 +166,12 @@ def sync(folder: Path, as_json: bool) -> None:
         click.echo(json.dumps(answer))
     else:
         click.echo(
-            f"Sent {answer['pushed']}, fetched {answer['pulled']}, waiting {answer['waiting']}."
+            f"Sent {answer['pushed']}, fetched {answer['pulled']}, waiting {answer['waiting']};"
+            f" photos sent {answer['photos']}, waiting {answer['photos_waiting']}."
         )
-    for line in answer["refused"]:
+    for line in (*answer["refused"], *filter(None, [answer["photos_say"]])):
         click.echo(line, err=True)
-    if answer["waiting"] or answer["refused"]:
+    if answer["waiting"] or answer["refused"] or answer["photos_waiting"]:
         sys.exit(NO)
 
 

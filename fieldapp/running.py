@@ -13,6 +13,7 @@ from typing import Any
 
 from fieldapp import identity
 from fieldapp.store import Store
+from sync.blobs import SILENCE_S
 from sync.errors import FolderHeld, SyncError, Unsuitable
 
 RUNNING = "running.json"
@@ -64,8 +65,8 @@ def serve(
     Args:
         store: The open node.
         port: The port; 0 takes the one used last, else a free one.
-        door: Open ``/sync`` here: the node is a central.
-        listen: ``ADDRESS:PORT`` that opens ``/sync`` to others, never a page.
+        door: Open ``/sync`` and ``/blob`` here: the node is a central.
+        listen: ``ADDRESS:PORT`` that opens ``/sync`` and ``/blob`` to others, never a page.
         certificate: PEM file for ``listen``; needed for any address but loopback.
         key: PEM file of its private key.
         ready: Told once it answers.
@@ -133,7 +134,7 @@ def _open_listen(store: Store, listen: str, certificate: str, key: str) -> Calla
         raise Unsuitable(
             "Listening needs the central extra: install 'tapwitness[central]'."
         ) from fault
-    server = Server((host, int(port)), create_door(store), numthreads=THREADS)
+    server = Server((host, int(port)), create_door(store), numthreads=THREADS, timeout=SILENCE_S)
     if certificate and key:
         try:
             server.ssl_adapter = BuiltinSSLAdapter(certificate, key)

@@ -11,7 +11,7 @@ MEDIAN = 3
 
 
 class NoCodeSeen(RuleBroken):
-    """No bottle code was read; ``why`` is ``several`` (``count``), ``other`` (``text``) or empty."""
+    """No bottle code was read; ``why``: ``several`` (``count``), ``other`` (``text``), none."""
 
     kind = "no-code-seen"
 

@@ -29,7 +29,7 @@ from fieldapp.projections.pages import Pages
 from fieldapp.projections.summaries import text
 from fieldapp.schemas.facts import check_fact
 from fieldapp.scopes import scope_of
-from sync import ledger
+from sync import blobs, ledger
 from sync.adopt import carried
 from sync.entry import (
     CARRIED,
@@ -632,6 +632,17 @@ class Store:
         """Return how many own entries central has not acknowledged."""
         with self.reader() as db:
             return sum(self._waiting(db, log) for log in self.own_logs(db))
+
+    def photos_waiting(self) -> dict[str, int]:
+        """Return the photos that central did not say it holds, each with its bytes."""
+        with self.reader() as db:
+            return blobs.waiting(db, self.own_logs(db))
+
+    def names_blob(self, sha256: str) -> str:
+        """Return the media type by which an entry here names that file, empty where none does."""
+        with self.reader() as db:
+            row = db.execute("SELECT t FROM blob WHERE h = ? LIMIT 1", (sha256,)).fetchone()
+        return str(row[0]) if row else ""
 
     def acknowledged_at(self) -> str | None:
         """Return when central signed that it holds the current log, by central's clock."""

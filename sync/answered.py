@@ -32,6 +32,8 @@ class Answered:
     regressed: list[str]
     denied: list[str]
     more: bool
+    missing: dict[str, int]  # blobs that central lacks, each with the bytes it has
+    received: list[str]  # blobs that it holds whole
 
     @classmethod
     def read(cls, replica: Replica, answer: Mapping[str, Any]) -> "Answered":
@@ -58,6 +60,8 @@ class Answered:
                 ],
                 denied=[_word(scope) for scope in wire.read_list(answer["denied"], "denied")],
                 more=answer["more"] is True,
+                missing=dict(_missing(one) for one in _blobs(answer, "missing")),
+                received=[wire.read_name(one) for one in _blobs(answer, "received")],
             )
         except (BadEntry, Refused) as fault:
             raise NoContact(f"the answer does not hold ({fault})") from fault
@@ -97,6 +101,17 @@ def _refusal(value: Any) -> dict[str, Any]:
 def _pull(piece: Any) -> tuple[str, str, list[Any]]:
     entries = wire.read_list(piece["entries"], "entries")
     return _word(piece["scope"]), wire.read_log(piece["log"]), entries
+
+
+def _blobs(answer: Mapping[str, Any], which: str) -> list[Any]:
+    return wire.read_list(answer.get(f"blobs_{which}"), f"blobs_{which}")
+
+
+def _missing(value: Any) -> tuple[str, int]:
+    name, have = wire.read_name(value["h"]), value["have"]
+    if type(have) is not int or have < 0:
+        raise wire.malformed("an offset is no number")
+    return name, have
 
 
 def _word(value: object) -> str:

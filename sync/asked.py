@@ -5,6 +5,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from sync import wire
+from sync.blobs import MOST_NAMED
 from sync.ledger import Head
 
 MOST_MARKS = 64  # places by which one log is compared; each is twice as far back
@@ -20,6 +21,7 @@ class Asked:
     want: dict[str, list[Head]]
     have: dict[str, dict[str, tuple[Head, str]]]  # with the sum of what is held up to there
     skip: frozenset[str]
+    blobs: list[str]  # which the device would have central's word on
 
     @classmethod
     def read(cls, request: Mapping[str, Any]) -> "Asked":
@@ -54,6 +56,10 @@ class Asked:
             skip=frozenset(
                 wire.read_log(log) for log in wire.read_list(request.get("skip"), "skip")
             ),
+            blobs=[
+                wire.read_name(name)
+                for name in wire.read_list(request.get("blobs"), "blobs")[:MOST_NAMED]
+            ],
         )
 
 

@@ -7,7 +7,7 @@ remembers nothing about a device between requests.
 from collections.abc import Mapping
 from typing import Any
 
-from sync import ledger, wire
+from sync import blobs, ledger, wire
 from sync.asked import Asked
 from sync.encoding import b64
 from sync.entry import OPENED, Entry, scopes_of, verify
@@ -76,6 +76,9 @@ def answer_exchange(replica: Replica, dev: str, request: Mapping[str, Any]) -> d
         answer.state_heads()
         answer.read_tails()
         answer.read_scopes()
+        shelf = replica.hooks.shelf
+        missing = blobs.missing(db, shelf, answer.heads)
+        held = blobs.held(db, shelf, asked.blobs)
     refused += answer.refused
     return {
         "proto": wire.PROTO,
@@ -88,8 +91,8 @@ def answer_exchange(replica: Replica, dev: str, request: Mapping[str, Any]) -> d
         "more": answer.more,
         "regressed": answer.regressed,
         "denied": answer.denied,
-        "blobs_missing": [],
-        "blobs_received": [],
+        "blobs_missing": missing,
+        "blobs_received": held,
         "keys": [],
     }
 

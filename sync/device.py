@@ -15,7 +15,7 @@ import sqlite3
 from collections.abc import Mapping
 from typing import Any
 
-from sync import ledger, wire
+from sync import blobs, ledger, wire
 from sync.adopt import adopt
 from sync.answered import Answered
 from sync.compare import View
@@ -57,6 +57,7 @@ def ask(replica: Replica, run: Run) -> dict[str, Any]:
         returned = _give_back(db, run, left if size > 0 else 0)
         have = {scope: _cursors(db, run, scope, own) for scope in replica.hooks.scopes(db)}
         want = {log: _marks(db, log, common) for log, common in run.fetch.items()}
+        unsent = list(blobs.waiting(db, own))[: blobs.MOST_NAMED]
     moment = replica.hooks.moment()
     return {
         "proto": wire.PROTO,
@@ -70,6 +71,7 @@ def ask(replica: Replica, run: Run) -> dict[str, Any]:
         "want": want,
         "have": have,
         "skip": sorted(run.skip),
+        "blobs": unsent,
         "keys": 0,
     }
 
@@ -88,6 +90,10 @@ def take(replica: Replica, run: Run, request: Mapping[str, Any], answer: Mapping
     run.more = said.more
     moved |= _take_regressed(run, said)
     run.denied |= set(said.denied)
+    run.missing = said.missing
+    if said.received or said.missing:
+        with replica.hooks.transaction() as db:
+            blobs.note(db, said.received, said.missing)
     return moved
 
 

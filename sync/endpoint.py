@@ -11,7 +11,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from sync import central, peer, wire
+from sync import blobs, central, peer, wire
 from sync.encoding import unb64, write_json
 from sync.entry import Realm, pae
 from sync.errors import Refused, SyncError
@@ -38,6 +38,8 @@ CODES = {
     "too-often": 429,
     "not-found": 404,
     "not-post": 405,
+    "offset": 409,
+    "wrong-bytes": 422,
 }
 Headers = list[tuple[str, str]]
 
@@ -71,6 +73,28 @@ class Endpoint:
         self._challenges: OrderedDict[str, _Session] = OrderedDict()
         self._tokens: OrderedDict[bytes, _Session] = OrderedDict()
         self._failures = _Failures()
+        self._door = blobs.Door(replica, seconds=seconds)
+
+    def blob(
+        self, method: str, path: str, headers: Mapping[str, str], body: blobs.Readable
+    ) -> tuple[int, Headers, bytes]:
+        """Return code, headers and body for HEAD or PATCH of a blob; the body is read in steps.
+
+        The session is that of the exchange. The nonce comes back in a header.
+        """
+        named = {name.lower(): value for name, value in headers.items()}
+        nonce: Headers = [(blobs.NONCE, named.get(blobs.NONCE.lower(), "")[:SMALL])]
+        try:
+            self._session_of(named)
+            code, offset = self._door.answer(method, path.removeprefix(blobs.ROOT), named, body)
+        except blobs.OffsetDiffers as refusal:
+            code, kind, raw = self._problem(refusal, "")
+            return code, [*kind, *nonce, (blobs.OFFSET, str(refusal.offset))], raw
+        except Refused as refusal:
+            code, kind, raw = self._problem(refusal, "")
+            return code, [*kind, *nonce], raw
+        place: Headers = [(blobs.OFFSET, str(offset)), ("Cache-Control", "no-store")]
+        return code, [*place, *nonce], b""
 
     def answer(
         self, method: str, path: str, headers: Mapping[str, str], body: bytes, remote: str
@@ -187,6 +211,9 @@ class Endpoint:
     def _exchange(
         self, request: dict[str, Any], headers: Mapping[str, str], remote: str
     ) -> dict[str, Any]:
+        return central.answer_exchange(self.replica, self._session_of(headers).dev, request)
+
+    def _session_of(self, headers: Mapping[str, str]) -> _Session:
         scheme, _, token = headers.get("authorization", "").partition(" ")
         with self._lock:
             session = self._tokens.get(_hidden(token)) if scheme == "Bearer" else None
@@ -194,7 +221,7 @@ class Endpoint:
             raise Refused("no-session", "The session is over. Open a new one; nothing is lost.")
         if self._public_key(session.dev, session.key) is None:
             raise Refused("not-enrolled", "This device is no longer enrolled here. Enrol it anew.")
-        return central.answer_exchange(self.replica, session.dev, request)
+        return session
 
     def _public_key(self, dev: str, key: str) -> bytes | None:
         with self.replica.hooks.reading() as db:

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from datetime import datetime
 from typing import Any
 
-from sync import device, peer
+from sync import blobs, device, peer
 from sync.encoding import b64
 from sync.endpoint import ROOT, enrolment_proof, session_proof
 from sync.entry import Realm
@@ -15,6 +15,7 @@ from sync.keys import DeviceKey, key_id
 from sync.peer import Answer, Peer
 from sync.pull import Run
 from sync.replica import Moment, Pin, Replica
+from sync.upload import Uploaded, Uploading
 
 NONCE_BYTES = 16
 MOST_RENEWALS = 2
@@ -27,7 +28,8 @@ class SyncReport:
     """What one run did: counts of entries, logs in which central fell back, what was refused.
 
     ``waiting`` own entries are not acknowledged; ``denied`` scopes are not granted; ``at`` is
-    the time here when it ended. ``refused`` holds {log, at, why, says}.
+    the time here when it ended. ``refused`` holds {log, at, why, says}. Photos count apart:
+    entries have arrived though the line broke under a photo; ``photos_say`` is what stopped them.
     """
 
     pushed: int
@@ -38,6 +40,9 @@ class SyncReport:
     refused: list[dict[str, Any]]
     denied: list[str]
     at: str
+    photos_sent: int = 0
+    photos_waiting: int = 0
+    photos_say: str = ""
 
 
 def run(
@@ -46,11 +51,13 @@ def run(
     *,
     progress: Progress | None = None,
     stop: Stop | None = None,
+    photos: Progress | None = None,
 ) -> SyncReport:
-    """Exchange with central until nothing is left, or nothing moves any more.
+    """Exchange with central until nothing is left, or nothing moves any more, then send photos.
 
     Whatever happens, each step taken before stays taken and the next run goes on from there.
-    ``progress(done, of)`` counts entries; ``stop()`` is asked between exchanges.
+    ``progress(done, of)`` counts entries, ``photos(done, of)`` bytes; ``stop()`` is asked
+    between exchanges and between pieces of photos.
 
     Raises:
         NoContact: The line or the answer failed; try again later (``sync.retry``).
@@ -65,8 +72,10 @@ def run(
             _tell(replica, state, progress)
         if device.done(replica, state):
             break
+    came = _send_blobs(replica, to, state, photos, stop)
     with replica.hooks.reading() as db:
         waiting = device.waiting(replica, db)
+        unsent = blobs.waiting(db, replica.hooks.own_logs(db))
     return SyncReport(
         state.pushed,
         state.pulled,
@@ -76,7 +85,25 @@ def run(
         state.refused,
         sorted(state.denied),
         replica.hooks.moment().at,
+        len(came.names),
+        len(unsent),
+        came.says,
     )
+
+
+def _send_blobs(
+    replica: Replica, to: Peer, state: Run, progress: Progress | None, stop: Stop | None
+) -> Uploaded:
+    def arrived(name: str) -> None:
+        with replica.hooks.transaction() as db:
+            blobs.note(db, [name], [])
+
+    if not state.missing:
+        return Uploaded()
+    sending = Uploading(
+        replica, to, lambda: open_session(replica, to), progress=progress, stop=stop
+    )
+    return sending.run(state.missing, arrived)
 
 
 def enrol(to: Peer, realm: Realm, key: DeviceKey, dev: str, code: str) -> dict[str, Any]:

@@ -1,6 +1,7 @@
-"""Central over HTTP: one kept-alive connection, TLS always verified, nothing believed unproved."""
+"""Central over HTTP: a connection a thread, kept alive; TLS always verified, nothing believed."""
 
 import ipaddress
+import threading
 import time
 from collections.abc import Mapping
 from pathlib import Path
@@ -10,9 +11,10 @@ from urllib.parse import urlsplit
 import requests
 
 from sync import wire
+from sync.blobs import NONCE
 from sync.entry import Realm
 from sync.errors import NoContact, Unsuitable
-from sync.peer import Answer, decode, encode
+from sync.peer import Answer, Carried, carried, decode, encode, piece_headers
 
 CONNECT_S = 10.0
 SILENCE_S = 60.0  # between two bytes
@@ -30,11 +32,25 @@ class HttpPeer:
 
     def __init__(self, url: str, realm: Realm, *, authorities: Path | None = None) -> None:
         self.url, self.realm = check_address(url), realm
-        self._session = requests.Session()
-        # Nothing of the surroundings may switch verification off or add credentials.
-        self._session.trust_env = False
-        if authorities is not None:
-            self._session.verify = str(authorities)
+        self._authorities = authorities
+        self._mine = threading.local()
+        self._lock = threading.Lock()
+        self._open: list[requests.Session] = []
+
+    @property
+    def _session(self) -> requests.Session:
+        """Return this thread's own connection: requests promises nothing of a shared one."""
+        session: requests.Session | None = getattr(self._mine, "session", None)
+        if session is None:
+            session = requests.Session()
+            # Nothing of the surroundings may switch verification off or add credentials.
+            session.trust_env = False
+            if self._authorities is not None:
+                session.verify = str(self._authorities)
+            self._mine.session = session
+            with self._lock:
+                self._open.append(session)
+        return session
 
     def send(self, path: str, body: Mapping[str, Any], *, token: str = "") -> Answer:
         """Return central's answer to one request.
@@ -59,9 +75,39 @@ class HttpPeer:
         except requests.exceptions.RequestException as fault:
             raise NoContact("the line failed") from fault
 
+    def carry(
+        self, method: str, path: str, headers: Mapping[str, str], data: bytes, *, token: str = ""
+    ) -> Carried:
+        """Return central's answer to one piece of a blob.
+
+        Raises:
+            NoContact: No line, no trust, or an answer that is not central's.
+        """
+        sent = piece_headers(headers, data, token)
+        try:
+            with self._session.request(
+                method,
+                self.url + path,
+                data=data,
+                headers=sent,
+                timeout=(CONNECT_S, SILENCE_S),
+                allow_redirects=False,
+                stream=True,
+            ) as response:
+                named = {name.lower(): value for name, value in response.headers.items()}
+                return carried(response.status_code, named, _read(response), sent[NONCE])
+        except requests.exceptions.SSLError as fault:
+            raise NoContact("its certificate cannot be trusted") from fault
+        except requests.exceptions.RequestException as fault:
+            raise NoContact("the line failed") from fault
+
     def close(self) -> None:
-        """Let the connection go."""
-        self._session.close()
+        """Let the connections go."""
+        with self._lock:
+            for session in self._open:
+                session.close()
+            self._open.clear()
+        self._mine = threading.local()
 
 
 def check_address(url: str) -> str:

@@ -39,6 +39,7 @@ class Run:
     carried: int = 0
     more: bool = False
     sent_back: dict[str, list[Entry]] = field(default_factory=dict)
+    missing: dict[str, int] = field(default_factory=dict)  # blobs, as central said last
 
 
 def take_pull(replica: Replica, run: Run, request: Mapping[str, Any], said: Answered) -> bool:

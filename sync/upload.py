@@ -17,6 +17,10 @@ Progress = Callable[[int, int], None]
 Stop = Callable[[], bool]
 
 
+class WrongBytes(Refused):
+    """Central has all bytes of a blob and they have another hash; it dropped them."""
+
+
 @dataclass
 class Uploaded:
     """What one run sent: names that arrived whole, bytes sent, and what stood in the way."""
@@ -85,14 +89,20 @@ class Uploading:
 
     def _send(self, name: str, size: int) -> bool:
         """Send one blob to its end; say whether it arrived whole."""
-        doubts, offset = 0, self._done[name]
+        doubts, anew, offset = 0, False, self._done[name]
         with self._replica.hooks.shelf.path(name).open("rb") as file:
             while offset < size:
                 if self._over():
                     return False
                 file.seek(offset)
                 before = offset
-                offset = self._piece(name, offset, size, file.read(MOST_PIECE_BYTES))
+                try:
+                    offset = self._piece(name, offset, size, file.read(MOST_PIECE_BYTES))
+                except WrongBytes:
+                    if anew or not self._replica.hooks.shelf.sound(name):
+                        raise
+                    # Another device's bytes were wrong: central dropped them, and these are right.
+                    anew, offset = True, 0
                 doubts = 0 if offset > before else doubts + 1
                 if doubts > MOST_DOUBTS:
                     raise NoContact("a photo does not go on")
@@ -120,9 +130,11 @@ class Uploading:
 
     def _refused(self, name: str, answer: Carried) -> Exception:
         says = answer.says or f"Central answered {answer.code} to a photo. Try again later."
-        if answer.code == UNPROCESSABLE and not self._replica.hooks.shelf.sound(name):
-            says = f"The photo {name[:8]} is damaged on this device, so central did not take it."
-        if answer.code in (UNAUTHORIZED, 503) or answer.code >= 500:
+        if answer.code == UNPROCESSABLE:
+            if not self._replica.hooks.shelf.sound(name):
+                says = f"The photo {name[:8]} is damaged on this device: central did not take it."
+            return WrongBytes("blob", says)
+        if answer.code == UNAUTHORIZED or answer.code >= 500:
             return NoContact(says, answer.retry_after)
         return Refused("blob", says, answer.retry_after)
 

@@ -8,6 +8,7 @@ from sync.encoding import b64, read_json, unb64
 from sync.entry import LOG_ID, Entry, Realm, digest
 from sync.errors import BadEntry, Refused
 from sync.ledger import Head
+from sync.shelf import is_name
 
 PROTO = 1
 MOST_ENTRIES = 500  # in one exchange, each way
@@ -141,6 +142,13 @@ def read_log(value: object) -> str:
     if isinstance(value, str) and LOG_ID.fullmatch(value):
         return value
     raise malformed("a log id is not 22 characters of base64url")
+
+
+def read_name(value: object) -> str:
+    """Return the name of a blob as received."""
+    if isinstance(value, str) and is_name(value):
+        return value
+    raise malformed("a blob is not named by 64 hexadecimal digits")
 
 
 def malformed(says: str) -> Refused:

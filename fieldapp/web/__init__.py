@@ -21,7 +21,7 @@ POLICY = (
 )
 MOST_BYTES = 16 * 1024 * 1024
 HOSTS = ["127.0.0.1", "localhost", "[::1]"]
-MACHINES = ("/sync/", "/work/")
+MACHINES = ("/sync/", "/blob/", "/work/")
 """Paths that programs call: signed or with the folder's token, never with a form."""
 
 

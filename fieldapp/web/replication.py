@@ -1,9 +1,11 @@
-"""``/sync``: the door for other nodes. Bytes in, bytes out; ``sync.endpoint`` does the rest."""
+"""``/sync`` and ``/blob``: the door for other nodes. Bytes in, bytes out; ``sync`` has the rest."""
 
 from flask import Blueprint, Flask, Response, current_app, request
+from werkzeug.exceptions import ClientDisconnected
 
 from fieldapp.store import Store
 from fieldapp.work.devices import take_invite
+from sync.blobs import Readable
 from sync.endpoint import Endpoint
 from sync.wire import MOST_WIRE_BYTES
 
@@ -40,3 +42,29 @@ def door(_what: str) -> Response:
         request.remote_addr or "",
     )
     return Response(body, status=code, headers=headers)
+
+
+@bp.route("/blob/v1/<path:_name>", methods=["HEAD", "PATCH"])
+def blob(_name: str) -> Response:
+    """Take a piece of a photo from a device, or say where it ends."""
+    endpoint = current_app.extensions.get(ENDPOINT)
+    if endpoint is None:
+        return Response("This node is no central.", status=404)
+    code, headers, body = endpoint.blob(
+        request.method, request.path, dict(request.headers), _Body(request.stream)
+    )
+    return Response(body, status=code, headers=headers)
+
+
+class _Body:
+    """A request's body as it arrives; a line that breaks in the middle is the end of it."""
+
+    def __init__(self, stream: Readable) -> None:
+        self._stream = stream
+
+    def read(self, size: int, /) -> bytes:
+        """Return what has come, at most so many bytes."""
+        try:
+            return self._stream.read(size)
+        except (ClientDisconnected, OSError):
+            return b""

@@ -11,12 +11,18 @@ from sync.http import HttpPeer
 
 
 def send_and_fetch(
-    store: Store, *, progress: Callable[[int, int], None] | None = None
+    store: Store,
+    *,
+    progress: Callable[[int, int], None] | None = None,
+    photos: Callable[[int, int], None] | None = None,
 ) -> dict[str, Any]:
-    """Exchange with central until nothing is left either way.
+    """Exchange with central until nothing is left either way, then send photos.
+
+    ``progress`` counts entries, ``photos`` bytes.
 
     Returns:
-        ``pushed``, ``pulled``, ``waiting``, ``refused``, ``regressed``, ``carried``.
+        ``pushed``, ``pulled``, ``waiting``, ``refused``, ``regressed``, ``carried``,
+        ``photos`` (sent), ``photos_waiting``, ``photos_say`` (what stopped them, or empty).
 
     Raises:
         Refused: this device is not enrolled anywhere.
@@ -28,7 +34,7 @@ def send_and_fetch(
     with store.sending:
         peer = HttpPeer(pin.url, store.realm)
         try:
-            report = exchange.run(store.replica(), peer, progress=progress)
+            report = exchange.run(store.replica(), peer, progress=progress, photos=photos)
         finally:
             peer.close()
         with store.transaction():
@@ -36,10 +42,15 @@ def send_and_fetch(
     return {
         "pushed": report.pushed, "pulled": report.pulled, "waiting": report.waiting,
         "refused": [str(one["says"]) for one in report.refused], "regressed": report.regressed,
-        "carried": report.carried,
+        "carried": report.carried, "photos": report.photos_sent,
+        "photos_waiting": report.photos_waiting, "photos_say": report.photos_say,
     }  # fmt: skip
 
 
 def sync_now(store: Store, *, progress: Callable[..., None]) -> dict[str, Any]:
     """Send and fetch for a command, with its progress."""
-    return send_and_fetch(store, progress=lambda done, of: progress("sync", done, of))
+    return send_and_fetch(
+        store,
+        progress=lambda done, of: progress("sync", done, of),
+        photos=lambda done, of: progress("photos, bytes", done, of),
+    )

@@ -250,6 +250,7 @@ class Node:
         scope: Sequence[str] = (),
         private: bytes | None = None,
         blobs: Sequence[Mapping[str, Any]] = (),
+        raw_blobs: object = None,
     ) -> Entry:
         row = db.execute(
             "SELECT seq, hash FROM entry WHERE log = ? ORDER BY seq DESC LIMIT 1", (log,)
@@ -267,7 +268,7 @@ class Node:
             "boot": moment.boot,
             "refs": list(refs),
             "scope": list(scope),
-            **({"blobs": [dict(one) for one in blobs]} if blobs else {}),
+            **({"blobs": raw_blobs or [dict(one) for one in blobs]} if blobs or raw_blobs else {}),
             "data": dict(data),
         }
         limit = MOST_READ if kind == CARRIED else MOST_WRITTEN
