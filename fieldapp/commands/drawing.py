@@ -7,6 +7,7 @@ one that belongs elsewhere is barred with what it belongs to, until somebody say
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from datetime import datetime
+from typing import Any
 
 from fieldapp.commands.asked import (
     NOW,
@@ -182,7 +183,8 @@ def already_done(
         reason=reason,
         **when.fields(),
     )
-    return [stated, *(_as_it_happened(pages, visit, told, one, when) for one in drawn)]
+    done = [fact for one in drawn for fact in _as_it_happened(pages, visit, told, one, when)]
+    return [stated, *done]
 
 
 def swap_bottle(
@@ -219,6 +221,12 @@ def _set(pages: Asked, visit: str, code: str, draw: DrawStanding, when: When) ->
     row = pages.bottle(code)
     if row is not None:
         _check_belongs(row, visit, code, draw.draw)
+    return _bound(row, visit, code, draw, when)
+
+
+def _bound(
+    row: Mapping[str, Any] | None, visit: str, code: str, draw: DrawStanding, when: When
+) -> BottleSet:
     return BottleSet(
         visit=visit,
         bottle=code,
@@ -263,17 +271,22 @@ def _filled(visit: str, given: Drawn, when: When) -> BottleFilled:
     )
 
 
-def _as_it_happened(pages: Asked, visit: str, told: Standing, given: Drawn, when: When) -> Fact:
+def _as_it_happened(
+    pages: Asked, visit: str, told: Standing, given: Drawn, when: When
+) -> list[Fact]:
+    """Return the filling, with a bottle of elsewhere or a spare first stood in its place here."""
     draw = _draw(told, given.draw)
     code = normalise(given.code) if given.code.strip() else draw.bottle
     if given.fill not in FILLS:
         raise StrangeAnswer(question="fill", answer=given.fill)
     if not code:
-        return DrawPoured(visit=visit, draw=draw.draw, fill=given.fill, **when.fields())
+        return [DrawPoured(visit=visit, draw=draw.draw, fill=given.fill, **when.fields())]
     row = pages.bottle(code)
-    if row is not None and row["filled"] and row["visit"] == visit and row["draw"] == draw.draw:
+    meant = row is not None and (row["visit"], row["draw"]) == (visit, draw.draw)
+    if row is not None and row["filled"] and meant:
         raise StepOver(at=str(row["filled_at"]), visit=visit)
-    return _filled(visit, replace(given, code=code), when)
+    filled = _filled(visit, replace(given, code=code), when)
+    return [filled] if meant else [_bound(row, visit, code, draw, when), filled]
 
 
 def _printed_for(pages: Asked, visit: str, draw: int) -> set[str]:

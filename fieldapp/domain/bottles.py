@@ -69,6 +69,13 @@ class BottleStanding:
         return self.plan.draw if self.plan else 0
 
     @property
+    def moved(self) -> bool:
+        """Printed for one draw and, by a person's word, stood in the place of another (R26)."""
+        if not (self.plan and self.plan.draw and self.binding):
+            return False
+        return (self.plan.visit, self.plan.draw) != (self.binding.visit, self.binding.draw)
+
+    @property
     def purpose(self) -> str:
         """Why it is drawn: as bound when it was set, else as issued; fixed before the draw (R5)."""
         if self.binding and self.binding.purpose:

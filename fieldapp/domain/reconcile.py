@@ -33,6 +33,7 @@ FINDINGS = (
     "void-but-filled",
     "corrected-twice",
     "stand-too-short",
+    "bottles-swapped",
 )
 
 

@@ -11,6 +11,9 @@ from datetime import datetime
 from fieldapp.domain import reconcile
 from fieldapp.domain.bottles import BottleStanding, in_order, tell
 from fieldapp.domain.facts import (
+    BottleFilled,
+    BottleIssued,
+    BottleSet,
     DeviceEnrolled,
     DeviceGranted,
     PersonListed,
@@ -25,6 +28,7 @@ from fieldapp.domain.facts import (
 from fieldapp.domain.protocols import BadProtocol, Protocol, read_protocol
 from fieldapp.domain.protocols.standing import Standing
 from fieldapp.domain.protocols.where import where
+from fieldapp.domain.reconcile_visits import filled_elsewhere, short_stand, swapped
 from fieldapp.domain.recorded import Reading, Recorded
 from fieldapp.projections.custody import (
     absent_from,
@@ -185,6 +189,7 @@ def tell_visit(db: sqlite3.Connection, visit: str) -> None:
     issued = living(entries, "bottle.issued")
     standing = [e for e in issued if not _voided(db, str(getattr(e.fact, "bottle", "")))]
     found = reconcile.two_codes(visit, standing)
+    found += short_stand(visit, told.deviations if told else ())
     write_findings(db, f"visit:{visit}", plan.round, plan.site, found)
 
 
@@ -192,9 +197,7 @@ def _voided(db: sqlite3.Connection, bottle: str) -> bool:
     return bool(about(db, f"bottle:{bottle}", ("bottle.voided",)))
 
 
-def plan_of(
-    db: sqlite3.Connection, visit: str, entries: Iterable[Recorded]
-) -> VisitPlanned | None:
+def plan_of(db: sqlite3.Connection, visit: str, entries: Iterable[Recorded]) -> VisitPlanned | None:
     """Return the plan in force of a visit: the latest one written.
 
     A visit that was begun keeps its last plan though the round dropped it since (R20).
@@ -215,7 +218,21 @@ def stand_of_visit(
     if protocol is None:
         return None
     row = db.execute("SELECT keep_poured FROM p_round WHERE round = ?", (plan.round,)).fetchone()
-    return where(protocol, plan, list(entries), now, keep_poured=bool(row and row[0]))
+    recorded = list(entries)
+    recorded += _printed_elsewhere(db, recorded)
+    return where(protocol, plan, recorded, now, keep_poured=bool(row and row[0]))
+
+
+def _printed_elsewhere(db: sqlite3.Connection, entries: Iterable[Recorded]) -> list[Recorded]:
+    """Return the issues of bottles that this visit took and that were printed for another."""
+    taken, printed = set(), set()
+    for entry in entries:
+        if isinstance(entry.fact, BottleFilled | BottleSet):
+            taken.add(entry.fact.bottle)
+        if isinstance(entry.fact, BottleIssued):
+            printed.add(entry.fact.bottle)
+    strange = sorted(taken - printed)
+    return [e for code in strange for e in about(db, f"bottle:{code}", ("bottle.issued",))]
 
 
 def protocol_of(db: sqlite3.Connection, sha256: str) -> Protocol | None:
@@ -279,7 +296,21 @@ def tell_bottle(db: sqlite3.Connection, bottle: str) -> None:
         missing_at=absent_from(db, told.filled_at, told.cooler, str(row["route"])),
         boxes=boxes_of(db, _coolers_of(told)),
     )
+    found += _swapped(db, told)
     write_findings(db, f"bottle:{bottle}", str(row["round"]), str(row["site"]), found)
+
+
+def _swapped(db: sqlite3.Connection, told: BottleStanding) -> list[reconcile.Finding]:
+    """Look for the bottle that was filled in this one's place, where this one is in another's."""
+    away = filled_elsewhere(told)
+    if not away or told.plan is None:
+        return []
+    visits = (told.plan.visit, away)
+    issued = [e for visit in visits for e in about(db, f"visit:{visit}", ("bottle.issued",))]
+    codes = sorted({str(getattr(e.fact, "bottle", "")) for e in issued} - {told.bottle})
+    others = [tell(code, about(db, f"bottle:{code}")) for code in codes]
+    rows = db.execute("SELECT visit, site FROM p_visit WHERE visit IN (?, ?)", visits)
+    return swapped(told, others, dict(rows.fetchall()))
 
 
 def _bottle_row(db: sqlite3.Connection, told: BottleStanding) -> dict[str, object]:
@@ -334,7 +365,7 @@ def _received(told: BottleStanding) -> dict[str, object]:
 
 def _draw_of(db: sqlite3.Connection, told: BottleStanding, sha256: str) -> tuple[int, list[str]]:
     """Return volume and analyses as issued; of a spare, those of the draw it was bound to."""
-    if told.plan and told.plan.draw:
+    if told.plan and told.plan.draw and not told.moved:
         return told.plan.volume_ml, list(told.plan.analyse)
     protocol = protocol_of(db, sha256) if sha256 else None
     for draw in protocol.draws() if protocol else ():

@@ -173,6 +173,10 @@ def finding(row: Row, zone: str, now: datetime) -> str:
 def _value(name: str, given: Any, zone: str, now: datetime) -> str:
     if name in ("due", "until", "since"):
         return shown.clock(str(given), zone, now)
+    if name.endswith("_s") and isinstance(given, int):
+        return shown.hours(given)
+    if name == "other":
+        return grouped(str(given))
     if name == "codes":
         return ", ".join(grouped(str(code)) for code in given)
     if isinstance(given, list):

@@ -32,5 +32,11 @@ FINDINGS: dict[str, str] = {
     "results-differ": N_("Bottle {bottle} has results for {analyte} that differ."),
     "void-but-filled": N_("Bottle {bottle} was voided and is recorded as filled."),
     "corrected-twice": N_("Two corrections of entry {entry} stand side by side."),
-    "stand-too-short": N_("The water at {site} stood too short before the draw."),
+    "stand-too-short": N_(
+        "The water at {site} stood {stood_s} before the draw; the protocol asks for {minimum_s}."
+    ),
+    "bottles-swapped": N_(
+        "Two bottles changed places: {bottle}, printed for {printed}, was filled at {filled}, and"
+        " {other}, printed for {filled}, at {printed}."
+    ),
 }
