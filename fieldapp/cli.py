@@ -292,6 +292,28 @@ def labels(
             click.echo(f"{target}: {len(answer['codes'])} labels, {answer['issued']} codes issued.")
 
 
+@main.command()
+@click.argument("cooler")
+@click.option("-o", "--output", type=click.Path(dir_okay=False, path_type=Path), required=True)
+@click.option("--route", default="", help="The route, where a box of that number is on several.")
+@folder_option
+@json_option
+def custody(cooler: str, output: Path, route: str, folder: Path, as_json: bool) -> None:
+    """Print a cooler's custody record for its lid as PDF. COOLER is an id, or a box's number.
+
+    \b
+    Examples:
+      tapwitness custody 3 --route north-2 -o lid.pdf --data tablet
+      tapwitness custody C-7F3K2Q -o lid.pdf --data central
+    """
+    answer = _handed(folder, "custody", {"cooler": cooler, "route": route})
+    _write(output, base64.b64decode(answer.pop("pdf")))
+    if as_json:
+        click.echo(json.dumps(answer))
+    else:
+        click.echo(f"{output}: cooler {answer['cooler']}, {answer['bottles']} bottles.")
+
+
 def _routes_of(folder: Path, route: str) -> list[str]:
     """Return the route ids meant: the one named, or those of a round file."""
     file = Path(route)
@@ -453,9 +475,11 @@ def rehearse(route: Path | None, as_json: bool, keep: Path | None) -> None:
 
 @main.command()
 @click.option("--keep", type=click.Path(file_okay=False, path_type=Path), default=None,
-              help="Keep FOLDER/central and FOLDER/tablet afterwards.")  # fmt: skip
+              help="Keep FOLDER/central and FOLDER/tablet, and go on there.")  # fmt: skip
 def demo(keep: Path | None) -> None:
-    """Rehearse the shipped round, then serve its central and its tablet. Ctrl-C ends both.
+    """Show an invented town: its central, a tablet, and the line between them, to be cut.
+
+    Today's route waits on the tablet, last year's round is finished. Ctrl-C ends all of it.
 
     Example: tapwitness demo
     """

@@ -38,6 +38,7 @@ __all__ = [
     "labels_pdf",
     "parse_roll",
     "parse_sheet",
+    "printable",
 ]
 
 Progress = Callable[[int, int], None]
@@ -164,7 +165,7 @@ def _face(label: Label) -> Face:
     rows = [Row(_first_line(label), 8.0, BOLD), Row(tuple(_second_line(label)), 7.5)]
     if label.preservative == "acid":
         rows.append(Row(_caution(), 6.0, BOLD, below=True))
-    note = _printable(label.note)
+    note = printable(label.note)
     return Face(
         code=code,
         grouped=codes.grouped(code),
@@ -178,37 +179,37 @@ def _face(label: Label) -> Face:
 def _optional(label: Label) -> Iterator[Row]:
     if not label.note:
         yield Row((_care(label),), 5.6, below=True)
-    aside = _joined(_printable(label.purpose_words), _route(label))
+    aside = _joined(printable(label.purpose_words), _route(label))
     if aside:
         yield Row((aside,), 6.0)
-    yield Row((_printable(_("On the bottle, not on the cap.")),), 5.6, below=True)
+    yield Row((printable(_("On the bottle, not on the cap.")),), 5.6, below=True)
 
 
 def _caution() -> tuple[str, ...]:
     # A bottle is never rinsed; one with acid that ran over is discarded; what is in it is acid.
     # Source: laboratories' bottle instructions (read); that it burns: from memory, check.
     full = _("Acid inside, it burns. Do not rinse or overfill.")
-    return _printable(full), _printable(_("Acid inside. Do not rinse."))
+    return printable(full), printable(_("Acid inside. Do not rinse."))
 
 
 def _care(label: Label) -> str:
     if label.preservative == "acid":
-        return _printable(_("Cold water only."))
-    return _printable(_("Do not rinse. Cold water only."))
+        return printable(_("Cold water only."))
+    return printable(_("Do not rinse. Cold water only."))
 
 
 def _pens(label: Label) -> tuple[tuple[str, ...], ...]:
-    when = tuple(_printable(text) for text in (_("date"), _("time"), _("initials")))
-    where = tuple(_printable(text) for text in (_("site"), _("draw")))
+    when = tuple(printable(text) for text in (_("date"), _("time"), _("initials")))
+    where = tuple(printable(text) for text in (_("site"), _("draw")))
     return (when,) if label.site else (where, when)
 
 
 def _first_line(label: Label) -> tuple[str, ...]:
     volume = _volume(label.volume_ml)
     if not label.site:
-        return (_joined(_printable(_("Spare")), volume),)
-    number = _printable(_("Draw {number}").format(number=label.draw)) if label.draw else ""
-    words = _printable(label.draw_words) or number
+        return (_joined(printable(_("Spare")), volume),)
+    number = printable(_("Draw {number}").format(number=label.draw)) if label.draw else ""
+    words = printable(label.draw_words) or number
     return _joined(words, volume), _joined(_bound(number or words), volume)
 
 
@@ -218,9 +219,9 @@ def _second_line(label: Label) -> Iterator[str]:
     The preservative is never left out.
     """
     site, end = _site(label), _preservative(label)
-    names = [_bound(_printable(name)) for name in label.analyse]
+    names = [_bound(printable(name)) for name in label.analyse]
     if not names:
-        names = [_bound(_printable(_("not analysed")))] if site else [""]
+        names = [_bound(printable(_("not analysed")))] if site else [""]
     for count in range(len(names), 0, -1):
         yield _joined(_site_words(site), _counted(names, count), end)
     for length in SITE_LENGTHS:
@@ -229,7 +230,7 @@ def _second_line(label: Label) -> Iterator[str]:
     if not label.analyse:
         return
     many = ngettext("{count} analysis", "{count} analyses", len(names)).format(count=len(names))
-    yield _joined(_site_words(short), _bound(_printable(many)), end)
+    yield _joined(_site_words(short), _bound(printable(many)), end)
 
 
 def _counted(names: list[str], count: int) -> str:
@@ -238,7 +239,7 @@ def _counted(names: list[str], count: int) -> str:
 
 
 def _site_words(site: str) -> str:
-    return _bound(_printable(_("Site {site}").format(site=site))) if site else ""
+    return _bound(printable(_("Site {site}").format(site=site))) if site else ""
 
 
 def _preservative(label: Label) -> str:
@@ -246,19 +247,19 @@ def _preservative(label: Label) -> str:
     if label.preservative not in known:
         text = _("The preservative of bottle {code} is “{name}”. It may be none or acid.")
         raise BadLabel(text.format(code=label.code, name=label.preservative))
-    return _bound(_printable(known[label.preservative]))
+    return _bound(printable(known[label.preservative]))
 
 
 def _site(label: Label) -> str:
     site = unicodedata.normalize("NFC", label.site)
-    if _printable(site) != site:
+    if printable(site) != site:
         text = _("The site code “{site}” has letters that a label cannot show. Use A to Z and 0-9.")
         raise BadLabel(text.format(site=label.site))
     return site
 
 
 def _route(label: Label) -> str:
-    return _printable(_("Route {route}").format(route=label.route)) if label.route else ""
+    return printable(_("Route {route}").format(route=label.route)) if label.route else ""
 
 
 def _volume(volume_ml: int) -> str:
@@ -274,7 +275,7 @@ def _joined(*pieces: str) -> str:
     return " · ".join(piece for piece in pieces if piece)
 
 
-def _printable(text: str) -> str:
+def printable(text: str) -> str:
     """Return the text as the label's fonts can show it: accents they lack are left off."""
     shown = []
     for character in unicodedata.normalize("NFC", text).translate(_THIN_SPACES):

@@ -12,7 +12,18 @@ from werkzeug.wrappers import Response
 from fieldapp import words
 from fieldapp.places import shipped
 from fieldapp.store import Store
-from fieldapp.web import bench, desk, errors, kitchen, people, replication, shown, state, work
+from fieldapp.web import (
+    bench,
+    crate,
+    desk,
+    errors,
+    kitchen,
+    people,
+    replication,
+    shown,
+    state,
+    work,
+)
 from fieldapp.web.context import give_back, new_act, pages, person, reading
 
 POLICY = (
@@ -46,7 +57,7 @@ def create_app(store: Store, *, token: str = "") -> Flask:
     app.extensions["tapwitness.store"] = store
     app.extensions["tapwitness.token"] = token
     _serve_static(app, static)
-    for part in (people, kitchen, bench, desk, replication, work, state):
+    for part in (people, kitchen, crate, bench, desk, replication, work, state):
         app.register_blueprint(part.bp)
     app.before_request(_guard)
     app.after_request(_headers)

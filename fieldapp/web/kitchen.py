@@ -8,7 +8,7 @@ from flask import Blueprint, g, redirect, render_template, request, url_for
 from marshmallow import EXCLUDE, ValidationError
 from werkzeug.wrappers import Response
 
-from fieldapp.commands import drawing, kitchen, running
+from fieldapp.commands import crate, drawing, kitchen, running
 from fieldapp.commands import last_use as statement
 from fieldapp.commands.asked import When, standing_of
 from fieldapp.domain.errors import RuleBroken, Unknown
@@ -262,10 +262,17 @@ def already_done(visit: str) -> Answer:
 
 @bp.post("/visits/<visit>/sign")
 def sign(visit: str) -> Answer:
-    """Sign with a typed name and, in the same press, close."""
+    """Sign with a typed name and, in the same press, close and count into the crate (R17)."""
     form = load(forms.SignForm)
-    closing = form["close"] == "yes"
-    return press(visit, lambda p, r: kitchen.sign(p, r, visit, name=form["name"], close=closing))
+    closing, counted = form["close"] == "yes", form["crate"]
+
+    def decide(p: Pages, r: Reading) -> Sequence[Fact]:
+        signed = kitchen.sign(p, r, visit, name=form["name"], close=closing)
+        if counted is None:
+            return signed
+        return [*signed, *crate.count_door(p, r, visit, count=counted)]
+
+    return press(visit, decide)
 
 
 @bp.post("/visits/<visit>/close")
@@ -299,6 +306,7 @@ def _board(row: Any, others: Sequence[Any]) -> str:
         others=others,
         going=shown_as.next_of(stops),
         ring=ring,
+        crate=shown_as.crate_of(row["route"]),
         rings=rings,
         stand_there=shown_as.ring_before(ring["earliest"]) if ring else None,
         today=shown_as.today(g.zone),

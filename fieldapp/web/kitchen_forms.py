@@ -18,6 +18,7 @@ FOLD = validate.OneOf(("", "0", "1"), error="Say which of the two times: the fir
 TELLERS = ("", "resident", "colleague", "caretaker", "neighbour")
 NOTE = validate.Length(max=500, error="Say it in at most 500 characters.")
 MOST_ML = 20_000
+MOST_CRATE = 500
 
 
 class WhenForm(Schema):
@@ -99,9 +100,14 @@ class BlankForm(WhenForm):
 
 
 class SignForm(Schema):
-    """The typed name; ``close`` ends the visit in the same press."""
+    """The typed name; ``close`` ends the visit, ``crate`` counts its bottles in the same press."""
 
     name = fields.String(load_default="", validate=validate.Length(max=120))
+    crate = fields.Integer(
+        load_default=None,
+        validate=validate.Range(min=0, max=MOST_CRATE, error="Type how many bottles you count."),
+        error_messages={"invalid": "Type how many bottles you count."},
+    )
     close = fields.String(load_default="", validate=validate.OneOf(("", "yes")))
 
 

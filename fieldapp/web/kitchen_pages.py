@@ -10,6 +10,7 @@ from flask import g, render_template, request, url_for
 
 from fieldapp.commands import drawing, kitchen, last_use
 from fieldapp.commands.asked import latest, planned, standing_of
+from fieldapp.commands.crate import OPEN
 from fieldapp.domain.bottles import in_order
 from fieldapp.domain.deviations import stated_kinds
 from fieldapp.domain.facts import (
@@ -24,6 +25,7 @@ from fieldapp.domain.facts import (
 from fieldapp.domain.protocols.standing import Standing
 from fieldapp.domain.recorded import Recorded
 from fieldapp.domain.timetext import chips
+from fieldapp.projections import crates
 from fieldapp.projections.pages import Row
 from fieldapp.web import said, spoken
 from fieldapp.web.context import pages, person, reading
@@ -155,6 +157,22 @@ def lately(zone: str) -> list[dict[str, Any]]:
 def stops_of(route: str) -> list[dict[str, Any]]:
     """Return the stops of a route in their order, each with where it stands now."""
     return [_stop(row) for row in pages().visits(route=route)]
+
+
+def crate_of(route: str) -> dict[str, Any]:
+    """Return what the board says of the crate: doors to count at, and the act that is due (R17)."""
+    coolers = crates.coolers(pages(), route=route)
+    loose = crates.loose(pages(), route)
+    taking = [one for one in coolers if one["state"] in OPEN and one["bottles"]]
+    sealed = [one for one in coolers if one["state"] == "sealed"]
+    held = next(iter((*taking, *sealed)), None)
+    due = "seal" if taking else "hand-over" if sealed else ""
+    return {
+        "doors": crates.doors(pages(), route),
+        "due": "pack" if loose and not taking else due,
+        "box": held["box"] if held else "",
+        "bottles": len(loose) + sum(one["packed"] for one in taking) or (held or {}).get("packed"),
+    }
 
 
 def next_of(stops: Sequence[Mapping[str, Any]]) -> Mapping[str, Any] | None:

@@ -149,6 +149,13 @@ PRESSES = {
     "deviation.stated": N_("Difference noted"),
     "visit.signed": N_("Signed"),
     "visit.closed": N_("Visit closed"),
+    "crate.counted": N_("Crate counted"),
+    "bottle.located": N_("Whereabouts noted"),
+    "bottle.packed": N_("Packed"),
+    "cooler.sealed": N_("Sealed"),
+    "cooler.reopened": N_("Opened again"),
+    "handover.offered": N_("Handed over"),
+    "handover.stated": N_("Handed over"),
 }
 """What an undo bar calls the last press, by the kind of its first entry."""
 

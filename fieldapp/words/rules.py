@@ -178,8 +178,8 @@ RULES: dict[str, str] = {
     "seal-used": N_("Seal {number} is or was on cooler {box}. Read the number again."),
     "bottles-loose": N_("In no cooler: {codes}. Put them in, or say where they are; then seal."),
     "count-other": N_(
-        "You counted {counted} bottles; {packed} are in it by the record. Count again, or scan "
-        "what is missing."
+        "Counted: {counted}. By the record {packed} are in it. Count again, or scan what is "
+        "missing."
     ),
     "not-sealed": N_("Cooler {box} bears no seal. Seal it first, then hand it over."),
     "why-missing": N_("Say in a few words why the seal was broken."),
@@ -190,4 +190,7 @@ RULES: dict[str, str] = {
         "The laboratory's number {number} stands on bottle {other} already. Read the sheet again."
     ),
     "not-that-late": N_("{on} is still to come. Type the day that stands on the sheet."),
+    "several-coolers": N_(
+        "{count} coolers bear the number {box}. Name the route as well, or the cooler's id."
+    ),
 }

@@ -8,6 +8,7 @@ from collections.abc import Callable, Mapping
 from typing import Any
 
 from fieldapp.store import Store
+from fieldapp.work.custody import print_custody
 from fieldapp.work.devices import enrol, invite
 from fieldapp.work.labels import print_labels
 from fieldapp.work.results import import_results
@@ -22,6 +23,7 @@ WORK: dict[str, Callable[..., dict[str, Any]]] = {
     "round-import": import_round,
     "results-import": import_results,
     "labels": print_labels,
+    "custody": print_custody,
     "invite": invite,
     "enrol": enrol,
     "sync": sync_now,
