@@ -55,6 +55,8 @@ ARROWS: dict[str, frozenset[str]] = {
     "photos": frozenset({"domain", "sync"}),
     "scanning": frozenset({"photos", "domain"}),
     "clock": frozenset({"domain"}),
+    "photos": frozenset({"domain", "sync"}),
+    "scanning": frozenset({"photos", "domain"}),
     "settings": frozenset(),
     "places": frozenset(),
     "domain": frozenset(),

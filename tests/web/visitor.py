@@ -24,6 +24,8 @@ VISIT = "V-0401"
 STRANGER = "00000000000"
 """A right code that no round here issued."""
 
+COOLER = "C-1"
+
 
 class Visitor:
     """One browser at the application of a node that holds the shipped plan."""
@@ -34,6 +36,7 @@ class Visitor:
             store.put("places", "kitchen bench desk")
         self.codes = nodes.issue(store)
         self.finding = self._find()
+        press(store, facts.BottlePacked(bottle=self.codes[1], cooler=COOLER, route=nodes.ROUTE))
         self.app: Flask = create_app(store, token=TOKEN)
         self.client = self.app.test_client()
         self.token = ""
@@ -57,7 +60,7 @@ class Visitor:
         """Return a path of that route, filled with what this node holds."""
         known = {
             "visit": VISIT, "route": nodes.ROUTE, "round_id": nodes.ROUND, "bottle": self.codes[0],
-            "finding_id": self.finding, "name": self.static, "_what": "session",
+            "finding_id": self.finding, "cooler": COOLER, "name": self.static, "_what": "session",
         }  # fmt: skip
         if rule.endpoint == "work.hand_in":
             known["name"] = "labels"
