@@ -24,7 +24,7 @@ def scope_of(pages: Pages, given: Fact) -> list[str]:
     if isinstance(given, EntryCorrected | EntryWithdrawn):
         answered = pages.fact(given.of)
         if answered is None:
-            return ["all"]
+            return []  # nobody here knows where the entry went, so nobody else is told
         return scope_of(pages, answered.fact)
     if isinstance(given, SiteDropped):
         return [f"route:{route}" for route in _routes_to(pages, given)]

@@ -29,7 +29,7 @@ EVERYBODY, CENTRAL_ALONE = ["all"], []
 REACH = {
     # design 5: rounds, protocols, persons, devices and the logs themselves
     **dict.fromkeys(
-        ("log.opened", "log.carried", "clock.checked", "round.opened", "round.changed",
+        ("log.opened", "round.opened", "round.changed",
          "protocol.kept", "person.listed", "device.enrolled", "device.granted"),
         EVERYBODY,
     ),
@@ -49,9 +49,10 @@ REACH = {
          "handover.offered", "handover.stated", "receipt.stated"),
         AND_AT_THE_LABORATORY,
     ),
-    # answers, settlements, results: of central alone
+    # answers, settlements, results, clocks: of central alone; what is carried goes by its own words
     **dict.fromkeys(
-        ("results.learned", "result.reported", "finding.settled"), CENTRAL_ALONE
+        ("results.learned", "result.reported", "finding.settled", "clock.checked", "log.carried"),
+        CENTRAL_ALONE,
     ),
     # these go where the entry went that they answer: see the test below
     "entry.corrected": None,

@@ -3,7 +3,7 @@
 from collections.abc import Mapping
 from typing import Any
 
-from fieldapp.domain.facts.base import ALL, ROUTE_LAB, Done, Fact, fact, private
+from fieldapp.domain.facts.base import ALL, CENTRAL, ROUTE_LAB, Done, Fact, fact, private
 
 
 @fact("log.opened", place="ledger", reach=ALL)
@@ -17,12 +17,13 @@ class LogOpened(Fact):
     prev_head: str = ""
 
 
-@fact("log.carried", place="ledger", reach=ALL)
+@fact("log.carried", place="ledger", reach=CENTRAL)
 class LogCarried(Fact):
     """An entry of a branch that central does not hold, carried whole into the new log.
 
     ``orig`` is its text, or ``deflated`` where that is long; ``priv`` labels its private part
-    and ``scope`` repeats its words, so that it is pulled like the entry inside.
+    and ``scope`` repeats its words: sync pulls it like the entry inside, so it has no reach of
+    its own.
     """
 
     sig: str
@@ -32,7 +33,7 @@ class LogCarried(Fact):
     priv: Mapping[str, Any] | None = None
 
 
-@fact("clock.checked", place="ledger", reach=ALL)
+@fact("clock.checked", place="ledger", reach=CENTRAL)
 class ClockChecked(Fact):
     """One comparison of this device's clock with central's, at a session.
 
