@@ -41,7 +41,7 @@ def told(cooler: Arrival, zone: str) -> dict[str, Any]:
         "title": title(cooler, zone),
         "in": len(received),
         "of": cooler.expected,
-        "missing": gone,
+        "missing": sorted(gone, key=lambda row: (row["site"], row["draw"], row["bottle"])),
         "strays": len(aside),
         "says": comparisons(cooler) if opened else [],
         "uncounted": opened.count - len(received) if opened else 0,

@@ -135,7 +135,8 @@ class Counter {
     const word = answer.word || "stop"
     this.tell(answer)
     if (answer.received) this.root.querySelector("#received").innerHTML = answer.received
-    if (answer.tally !== undefined) this.root.querySelector("#tally").innerHTML = answer.tally
+    const tally = this.root.querySelector("#tally")
+    if (tally && answer.tally !== undefined) tally.innerHTML = answer.tally
     if (answer.cards !== undefined) this.form.elements.namedItem("cards").value = answer.cards
     if (answer.act) this.form.elements.namedItem("act").value = answer.act
     if (answer.number !== undefined && fields.get("numbering") === "counted") this.next(answer.number)
@@ -152,6 +153,7 @@ class Counter {
     else fresh.content.append(this.plainStop(answer.says))
     fresh.content.firstElementChild?.classList.add("told--new")
     place.replaceChildren(fresh.content, ...before)
+    place.classList.toggle("crowded", before.length > 0)
     before.forEach(panel => this.keepSmall(panel))
   }
 
@@ -164,7 +166,9 @@ class Counter {
     seen.className = "told__seen"
     seen.textContent = this.root.querySelector("#answer").dataset.seen
     seen.addEventListener("click", () => { panel.remove(); this.focus() })
-    panel.append(seen)
+    const ways = panel.querySelector("[data-ways] .buttons")
+    if (ways) seen.classList.add("button", "button--plain", "button--quiet")
+    ;(ways ?? panel).append(seen)
   }
 
   plainStop(says) {

@@ -31,11 +31,13 @@ class Reader:
 
     def hidden(self, page: str, action: str) -> dict[str, str]:
         """Return the hidden fields of the form that goes to ``action``."""
-        form = next(
-            part for part in self.read(page).split("<form")[1:] if f'action="{action}"' in part
-        )
-        found = _HIDDEN.finditer(form.split("</form>")[0])
-        return {one["name"]: unescape(one["value"]) for one in found}
+        return hidden_in(self.read(page), action)
+
+    def go_on(self, shown: str, action: str, **fields: Any) -> str:
+        """Send the form of a page already read and return the page that it leads to."""
+        answer = self.client.post(action, data={**hidden_in(shown, action), **fields})
+        assert answer.status_code == 303, answer.get_data(as_text=True)
+        return self.read(answer.location)
 
     def send(self, page: str, action: str, **fields: Any) -> TestResponse:
         """Open the page and send its form with those fields."""
@@ -46,6 +48,13 @@ class Reader:
         answer = self.send(page, action, **fields)
         assert answer.status_code == 303, answer.get_data(as_text=True)
         return self.read(answer.location)
+
+
+def hidden_in(shown: str, action: str) -> dict[str, str]:
+    """Return the hidden fields of the form of that page that goes to ``action``."""
+    form = next(part for part in shown.split("<form")[1:] if f'action="{action}"' in part)
+    found = _HIDDEN.finditer(form.split("</form>")[0])
+    return {one["name"]: unescape(one["value"]) for one in found}
 
 
 def words(page: str) -> str:
