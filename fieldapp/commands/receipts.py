@@ -1,17 +1,31 @@
 """Received by a laboratory that runs nothing of ours: the Desk states it from the paper (R12)."""
 
 from collections.abc import Mapping
-from datetime import datetime
+from dataclasses import dataclass
+from datetime import datetime, timedelta
 from zoneinfo import ZoneInfo
 
 from fieldapp.commands.asked import NOW, When, check_past
 from fieldapp.domain.errors import RuleBroken, StepOver, Unknown
-from fieldapp.domain.facts import Fact, ReceiptStated
+from fieldapp.domain.facts import EntryWithdrawn, Fact, ReceiptStated
 from fieldapp.domain.recorded import Reading
+from fieldapp.domain.timetext import format_utc
 from fieldapp.projections import crates
 from fieldapp.projections.pages import Pages
 
 STATED = "stated"
+
+TAKE_BACK_WITHIN = timedelta(seconds=10)
+"""The least time for which a press can be taken back, though another follows it (R45)."""
+
+
+@dataclass(frozen=True, slots=True)
+class Document:
+    """A file on this node's disk: its hash, its bytes, its media type."""
+
+    sha256: str = ""
+    n: int = 0
+    media: str = ""
 
 
 class NobodyNamed(RuleBroken):
@@ -46,7 +60,7 @@ def state_receipt(
     on: str,
     name: str,
     numbers: Mapping[str, str],
-    document: str = "",
+    document: Document | None = None,
     when: When = NOW,
 ) -> list[Fact]:
     """State that the laboratory received a cooler: day, who signed, its own numbers.
@@ -56,7 +70,7 @@ def state_receipt(
         on: The day on the sheet, ISO, in the round's zone.
         name: Who signed for the laboratory.
         numbers: Every bottle that came, with the laboratory's number or nothing.
-        document: SHA-256 of the signed sheet as it was kept.
+        document: The signed sheet as it was kept, if there is one.
         when: The time on the sheet, where one stands there.
 
     Raises:
@@ -76,12 +90,32 @@ def state_receipt(
     _check_day(pages, reading, row["round"], on)
     cleaned = {code: number.strip() for code, number in numbers.items()}
     _check_numbers(pages, cleaned, row["round"])
-    fields = {**when.fields(), "basis": STATED, "told_by": "laboratory"}
+    sheet = document or Document()
+    given = {**when.fields(), "basis": STATED, "told_by": "laboratory"}
     return [
         ReceiptStated(
-            cooler=cooler, numbers=cleaned, on=on, document=document, name=name.strip(), **fields
+            cooler=cooler, numbers=cleaned, on=on, name=name.strip(),
+            document=sheet.sha256, n=sheet.n, media=sheet.media, **given,
         )
-    ]
+    ]  # fmt: skip
+
+
+def take_back(pages: Pages, reading: Reading, cooler: str, *, of: str, by: str) -> list[Fact]:
+    """Take a stated receipt back: until this person's next press, and for ten seconds (R45).
+
+    Raises:
+        Unknown: No such statement is about this cooler.
+        StepOver: It is another person's, or something followed.
+    """
+    entry = pages.fact(of)
+    stated = isinstance(entry.fact, ReceiptStated) if entry else False
+    if entry is None or not stated or f"cooler:{cooler}" not in entry.fact.subjects():
+        raise Unknown(what="receipt", name=of[:8])
+    last = crates.last_of(pages, by)
+    follows = last is not None and last.act != entry.act
+    if entry.by != by or (follows and reading.at - entry.at > TAKE_BACK_WITHIN):
+        raise StepOver(at=format_utc(entry.at), cooler=cooler)
+    return [EntryWithdrawn(of=of)]
 
 
 def _check_day(pages: Pages, reading: Reading, round_id: str, on: str) -> None:

@@ -36,6 +36,15 @@ def loose(pages: Pages, route: str) -> list[Row]:
     )
 
 
+def loose_of(pages: Pages, round_id: str) -> list[Row]:
+    """Return the filled bottles of a round that are in no cooler and not received."""
+    return pages.rows(
+        "SELECT * FROM p_bottle WHERE round = ? AND filled = 1 AND cooler = ''"
+        " AND received_at = '' ORDER BY filled_at, bottle",
+        (round_id,),
+    )
+
+
 def bearing(pages: Pages, seal: str) -> Row | None:
     """Return the cooler that bears that seal or bore it until it was broken."""
     wanted = plain_seal(seal)
@@ -98,3 +107,11 @@ def latest_press(pages: Pages, route: str) -> Recorded | None:
     """Return the latest living custody press on a route."""
     found = in_order(about(pages.db, f"route:{route}", PRESSES))
     return found[-1] if found else None
+
+
+def last_of(pages: Pages, person: str) -> Recorded | None:
+    """Return the last entry that this person recorded at this node."""
+    row = pages.db.execute(
+        "SELECT hash FROM p_fact WHERE by = ? ORDER BY rowid DESC LIMIT 1", (person,)
+    ).fetchone()
+    return pages.fact(row[0]) if row else None

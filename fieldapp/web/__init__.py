@@ -14,6 +14,7 @@ from fieldapp.places import shipped
 from fieldapp.store import Store
 from fieldapp.web import (
     bench,
+    coolers,
     crate,
     desk,
     errors,
@@ -57,7 +58,7 @@ def create_app(store: Store, *, token: str = "") -> Flask:
     app.extensions["tapwitness.store"] = store
     app.extensions["tapwitness.token"] = token
     _serve_static(app, static)
-    for part in (people, kitchen, crate, bench, desk, replication, work, state):
+    for part in (people, kitchen, crate, bench, desk, coolers, replication, work, state):
         app.register_blueprint(part.bp)
     app.before_request(_guard)
     app.after_request(_headers)

@@ -216,6 +216,8 @@ def _told(row: Row, zone: str) -> dict[str, Any]:
     """Return a finding with its sentence and where its subject is shown."""
     what, _, name = row["about"].partition(":")
     href = url_for(".one_bottle", bottle=name) if what == "bottle" else ""
+    if what == "cooler":
+        href = url_for("coolers.one_cooler", cooler=name)
     return {**row, "sentence": said.finding(row, zone, reading().at), "href": href}
 
 

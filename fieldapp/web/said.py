@@ -11,7 +11,7 @@ from fieldapp.domain.codes import grouped
 from fieldapp.domain.facts import Done
 from fieldapp.domain.recorded import Recorded
 from fieldapp.projections.pages import Row
-from fieldapp.web import shown
+from fieldapp.web import custody_words, shown
 from fieldapp.words import N_
 
 OUTCOMES = {
@@ -129,6 +129,15 @@ ENTRIES = {
     "deviation.stated": N_("Deviation stated: {deviation}"),
     "water.used": N_("Last use of water: {exact}, {where}"),
     "entry.withdrawn": N_("Taken back"),
+    "crate.counted": N_("Counted into the crate: {count}"),
+    "bottle.located": N_("Said to be: {whereabouts}"),
+    "bottle.packed": N_("Packed into cooler {box}"),
+    "cooler.sealed": N_("Cooler {box} sealed with {seals}, {count} in it"),
+    "cooler.reopened": N_("Opened on the way, seals broken: {broken}"),
+    "handover.offered": N_("Handed over to {custodian}, {count} in it, seals {seals}"),
+    "handover.stated": N_("Taken by somebody without a device{waybill_said}"),
+    "cooler.opened": N_("Opened at the laboratory: seals read {seal_read}, {count} counted"),
+    "receipt.stated": N_("Received by the laboratory on {on}, as stated from paper"),
 }
 
 WITHHELD = {
@@ -177,6 +186,8 @@ def _value(name: str, given: Any, zone: str, now: datetime) -> str:
         return shown.hours(given)
     if name == "other":
         return grouped(str(given))
+    if name == "day":
+        return shown.day(str(given)) if given else words.gettext("on an unknown day")
     if name == "codes":
         return ", ".join(grouped(str(code)) for code in given)
     if isinstance(given, list):
@@ -201,7 +212,24 @@ def entry(recorded: Recorded) -> str:
         values["decision"] = analyse if values.get("analyse") else leave
     if "analyte" in values:
         values["analyte"] = words.word(str(values["analyte"]))
+    values |= _of_custody(data)
     return words.say(ENTRIES, given.kind, values) if given.kind in ENTRIES else given.kind
+
+
+def _of_custody(data: Mapping[str, Any]) -> dict[str, str]:
+    """Return the words in which an entry names seals, boxes and custodians."""
+    said = {
+        name: ", ".join(map(str, data.get(name) or ())) or words.gettext("none")
+        for name in ("seals", "broken", "seal_read")
+    }
+    said["whereabouts"] = of(custody_words.WHEREABOUTS, str(data.get("how", "")))
+    said["custodian"] = of(custody_words.TO, str(data.get("to", "laboratory")))
+    said["box"] = str(data.get("box") or data.get("cooler", ""))
+    waybill = data.get("waybill", "")
+    said["waybill_said"] = (
+        words.gettext(", waybill {number}").format(number=waybill) if waybill else ""
+    )
+    return said
 
 
 def withheld(counts: Mapping[str, int]) -> str:

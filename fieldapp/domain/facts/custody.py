@@ -5,6 +5,7 @@ own and is never named by its seal. ``box`` is the number painted on the box.
 """
 
 from collections.abc import Mapping
+from typing import Any
 
 from fieldapp.domain.facts.base import ROUTE_LAB, Done, fact, private
 
@@ -104,14 +105,21 @@ class ReceiptStated(Done):
     """A laboratory that runs nothing of ours received a cooler (R12): date, numbers, document.
 
     ``numbers`` maps a bottle to the laboratory's own number, empty where none was given;
-    ``document`` is the SHA-256 of the signed sheet.
+    ``document`` is the SHA-256 of the signed sheet as it was kept, ``n`` its bytes, ``media`` its
+    type, all empty where none was.
     """
 
     cooler: str
     numbers: Mapping[str, str]
     on: str
     document: str = ""
+    n: int = 0
+    media: str = ""
     name: str = private()
+
+    def blobs(self) -> tuple[dict[str, Any], ...]:
+        """Return the signed sheet as an entry names it, if there is one."""
+        return ({"h": self.document, "n": self.n, "t": self.media},) if self.document else ()
 
     def subjects(self) -> tuple[str, ...]:
         """Return the cooler and every bottle that came out of it."""
