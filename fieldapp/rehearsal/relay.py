@@ -45,7 +45,8 @@ class Relay:
         self._central_port = central_port
         self._writers: set[asyncio.StreamWriter] = set()
         self._carrying: set[asyncio.Task[None]] = set()
-        self._up, self._cuts, self._left = True, 0, -1
+        self._up, self._cuts = True, 0
+        self._left: dict[str, int] = {}  # bytes by way, after which it is cut
         self._passed = {"to_central": 0, "to_tablet": 0}
         self._loop = asyncio.new_event_loop()
         self._thread = threading.Thread(target=self._loop.run_forever, daemon=True)
@@ -70,13 +71,13 @@ class Relay:
         """Cut the line; what runs over it breaks off."""
         self._do(self._cut())
 
-    def cut_after(self, length: int) -> None:
-        """Cut the line by itself once that many more bytes have gone over it, either way."""
-        self._left = length
+    def cut_after(self, length: int, way: str = "to_central") -> None:
+        """Cut the line by itself once so many more bytes went that way (``to_tablet``: back)."""
+        self._left = {way: length}
 
     def restore(self) -> None:
         """Let connections through again."""
-        self._left = -1
+        self._left = {}
         self._up = True
 
     def close(self) -> None:
@@ -120,7 +121,7 @@ class Relay:
 
     async def _pass(self, come: asyncio.StreamReader, go: asyncio.StreamWriter, way: str) -> None:
         while self._up and (data := await come.read(STEP_BYTES)):
-            passes, last = self._measure(data)
+            passes, last = self._measure(data, way)
             self._passed[way] += len(passes)
             go.write(passes)
             await go.drain()
@@ -130,18 +131,18 @@ class Relay:
         with contextlib.suppress(OSError):
             go.write_eof()
 
-    def _measure(self, data: bytes) -> tuple[bytes, bool]:
+    def _measure(self, data: bytes, way: str) -> tuple[bytes, bool]:
         """Return how much of it still passes, and whether the line is cut behind it."""
-        if self._left < 0:
+        if way not in self._left:
             return data, False
-        passes = data[: self._left]
-        self._left -= len(passes)
-        return passes, self._left == 0
+        passes = data[: self._left[way]]
+        self._left[way] -= len(passes)
+        return passes, self._left[way] == 0
 
     async def _cut(self) -> None:
         if self._up:
             self._cuts += 1
-        self._up, self._left = False, -1
+        self._up, self._left = False, {}
         while self._writers:
             self._writers.pop().transport.abort()
 

@@ -50,11 +50,20 @@ class Way:
                 planned = ahead.popleft()
                 if arrival is not None:
                     self.time.until(arrival)
-                visit = self._visit(browser, planned.visit, route.sampler)
+                visit = self.visit(browser, planned.visit)
             back = visit.walk()
             self.drawn |= {(visit.visit, draw) for draw in visit.carried}
             if back is not None:
                 left.append((back, visit))
+
+    def visit(self, browser: Browser, visit: str) -> Visit:
+        """Return a planned visit, to be walked by the sampler of its route."""
+        (planned,) = [one for one in self.planned.visits if one.visit == visit]
+        (route,) = [one for one in self.planned.routes if one.route == planned.route]
+        codes = {draw: code for (of, draw), code in self.codes.items() if of == visit}
+        names = {one.person: one.name for one in self.planned.people}
+        signer = names.get(route.sampler) or route.sampler
+        return Visit(browser, self.time, visit, self.script.visit(visit), codes, signer)
 
     def receive(self, browser: Browser) -> None:
         """Receive every bottle that came, with the laboratory's numbers."""
@@ -84,11 +93,6 @@ class Way:
 
     def _arrival(self, visit: str, day: date) -> datetime:
         return self.script.arrives_at(visit, day, self.time.zone) or self.time.now()
-
-    def _visit(self, browser: Browser, visit: str, sampler: str) -> Visit:
-        codes = {draw: code for (of, draw), code in self.codes.items() if of == visit}
-        signer = next((p.name for p in self.planned.people if p.person == sampler), sampler)
-        return Visit(browser, self.time, visit, self.script.visit(visit), codes, signer)
 
 
 def choose(browser: Browser, person: str) -> None:

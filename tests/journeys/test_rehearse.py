@@ -2,18 +2,16 @@
 
 import contextlib
 import json
-import re
 import shutil
 import sqlite3
 import subprocess
 import sys
 import tempfile
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import replace
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
-from urllib import request
 from zoneinfo import ZoneInfo
 
 import numpy
@@ -344,26 +342,6 @@ def test_a_rehearsal_that_is_told_to_end_ends_its_nodes_too(tmp_path: Path) -> N
         assert not (keep / name / "ledger.db-wal").exists()
 
 
-def test_the_demo_serves_its_pages_until_it_is_told_to_end(tmp_path: Path) -> None:
-    home, spare, keep = (tmp_path / name for name in ("home", "spare", "kept"))
-    home.mkdir()
-    spare.mkdir()
-    with started("demo", "--keep", str(keep), env=walks.bare(home, spare)) as process:
-        assert process.stdout is not None
-        lines = list(until(process.stdout, "Ctrl-C ends both"))
-        addresses = [found[0] for line in lines if (found := re.findall(r"http://\S+", line))]
-        assert len(addresses) == 2
-        desk, people = (raw(address, path) for address, path in zip(addresses, PAGES, strict=True))
-        assert nodes.ROUND in desk
-        assert "Wrenna Oddquist" in people
-        process.terminate()
-        assert process.wait(60) == 0
-    for name in ("central", "tablet"):
-        with FolderLock(keep / name):
-            pass
-    assert list(spare.iterdir()) == []
-
-
 def test_a_file_with_faults_says_all_of_them_and_walks_nothing(tmp_path: Path) -> None:
     def change(plan: Plan) -> None:
         plan["round"]["zone"] = "Moon/Crater"
@@ -462,26 +440,6 @@ def started(*words: str, env: Mapping[str, str]) -> Iterator[subprocess.Popen[st
         finally:
             if process.poll() is None:
                 process.kill()
-
-
-PAGES = ("desk/", "")
-"""A page of central, and the first page of the tablet."""
-
-
-def raw(address: str, path: str) -> str:
-    """Return a page as it was sent."""
-    opener = request.build_opener(request.ProxyHandler({}))
-    with opener.open(address + path, timeout=30) as answer:
-        return str(answer.read().decode())
-
-
-def until(lines: Iterable[str], piece: str) -> Iterator[str]:
-    """Yield lines up to the one that holds the piece."""
-    for line in lines:
-        yield line
-        if piece in line:
-            return
-    raise AssertionError(f"no line says {piece}")
 
 
 def counts(**given: int) -> dict[str, int]:
