@@ -1,6 +1,7 @@
 """What the coordinator may do at the Desk: decide on held bottles, settle findings, void codes."""
 
 from fieldapp.commands.bench import ReasonMissing
+from fieldapp.commands.told import deviations_of
 from fieldapp.domain.codes import grouped, normalise
 from fieldapp.domain.errors import RuleBroken, StepOver, Unknown
 from fieldapp.domain.facts import AnalysisDecided, BottleVoided, Fact, FindingSettled
@@ -43,19 +44,25 @@ def decide_analysis(
     Raises:
         ReasonMissing: No reason is given.
         ResultStands: A result is in; deciding now would be choosing by the number.
-        NotHeld: The bottle is not held at the Bench.
+        NotHeld: The bottle is not held at the Bench, and no deviation came in after its receipt.
         StepOver: The same decision stands.
     """
     row = _bottle(pages, bottle)
     if row["results"]:
         raise ResultStands(bottle=grouped(row["bottle"]))
-    if row["outcome"] != "held":
+    if not _waits(pages, row):
         raise NotHeld(bottle=grouped(row["bottle"]))
     if not reason.strip():
         raise ReasonMissing(bottle=row["bottle"])
     if row["decided"] == ("analyse" if analyse else "leave"):
         raise StepOver(at=_latest(pages, f"bottle:{row['bottle']}", "analysis.decided"))
     return [AnalysisDecided(bottle=row["bottle"], analyse=analyse, reason=reason.strip())]
+
+
+def _waits(pages: Pages, row: Row) -> bool:
+    """Say whether a bottle waits for the Desk: held, or in before its record told a deviation."""
+    late = row["outcome"] == "accepted" and bool(deviations_of(pages, row))
+    return row["outcome"] == "held" or late
 
 
 def settle_finding(pages: Pages, reading: Reading, *, finding: str, reason: str) -> list[Fact]:

@@ -4,6 +4,7 @@ from collections.abc import Iterable, Mapping
 from datetime import datetime
 from typing import Any
 
+from fieldapp.domain.bottles import in_order
 from fieldapp.domain.facts import BottleReceived
 from fieldapp.domain.recorded import Recorded
 from fieldapp.projections import facts
@@ -24,6 +25,17 @@ _SUMS = f"""
 COUNTED = ("issued", "filled", "received", "held", "refused", "to_analyse", "resulted")
 """The counts of bottles, of a round and of each visit."""
 
+_DEVIATES = """EXISTS (
+    SELECT 1 FROM p_visit v, json_each(v.deviations) d WHERE v.visit = p_bottle.visit AND (
+        EXISTS (SELECT 1 FROM json_each(d.value, '$.draws') w WHERE w.value = p_bottle.draw)
+        OR (json_array_length(d.value, '$.draws') = 0 AND p_bottle.kind != 'blank')
+    ))"""
+"""Of a row of ``p_bottle``: a deviation of its visit bears on it, as ``deviations_on`` says."""
+
+_UNDECIDED = f"""decided = '' AND results = '{{}}' AND (
+    outcome = 'held' OR (outcome = 'accepted' AND to_analyse = 1 AND {_DEVIATES}))"""
+"""Held, or in before its record came and deviating by it: the Desk decides on both (R8)."""
+
 LISTS: dict[str, str] = {
     "issued": "issued = 1",
     "filled": "filled = 1",
@@ -31,7 +43,7 @@ LISTS: dict[str, str] = {
     "received": _RECEIVED,
     "not-received": f"filled = 1 AND NOT {_RECEIVED} AND outcome != 'refused'",
     "held": "outcome = 'held'",
-    "undecided": "outcome = 'held' AND decided = '' AND results = '{}'",
+    "undecided": _UNDECIDED,
     "refused": "outcome = 'refused'",
     "to-analyse": "to_analyse = 1",
     "with-result": "resulted = 1",
@@ -186,6 +198,12 @@ def latest_receipts(pages: Pages, since: datetime) -> list[Recorded]:
     )
     entries = (pages.fact(row[0]) for row in rows.fetchall())
     return [entry for entry in entries if entry is not None and entry.at >= since]
+
+
+def receipt_of(pages: Pages, bottle: str) -> Recorded | None:
+    """Return the latest living receipt of a bottle, with its reason."""
+    found = in_order(facts.about(pages.db, f"bottle:{bottle}", ("bottle.received",)))
+    return pages.fact(found[-1].hash, private=True) if found else None
 
 
 def latest_receipt_by(pages: Pages, person: str) -> Recorded | None:

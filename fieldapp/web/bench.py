@@ -242,9 +242,9 @@ def _cards(text: str) -> list[str]:
     return [word for word in dict.fromkeys(text.split()) if word in set(CARDS.values())]
 
 
-def _place(form: dict[str, Any]) -> dict[str, str]:
+def _place(form: dict[str, Any]) -> dict[str, Any]:
     return {"cooler": form["cooler"]} if form["cooler"] else {}
 
 
-def _seen(form: dict[str, Any]) -> dict[str, str]:
+def _seen(form: dict[str, Any]) -> dict[str, Any]:
     return {name: str(form[name]) for name in ("seals", "whole", "count")}

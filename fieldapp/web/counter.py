@@ -71,7 +71,7 @@ def answer_of(scanned: str, *, again: bool, cooler: str = "") -> Answer:
                 "scanned": scanned}  # fmt: skip
     row = pages().bottle(code)
     answer = told.said_of(pages(), row, again=again)
-    receipt = _receipt_of(code)
+    receipt: Any = rounds.receipt_of(pages(), code)
     seen = list((receipt.fact.checks or {}).values()) if receipt else []
     elsewhere = bool(receipt and cooler and receipt.fact.cooler != cooler)
     return {
@@ -134,17 +134,6 @@ def _listed(entry: Recorded) -> dict[str, Any]:
     assert isinstance(entry.fact, BottleReceived)
     row = pages().bottle(entry.fact.bottle)
     return {"entry": entry, "row": row or {}, "told": told.said_of(pages(), row)}
-
-
-def _receipt_of(code: str) -> Any:
-    entries = pages().story(f"bottle:{code}")
-    gone = pages().gone(entry.hash for entry in entries)
-    mine = [
-        entry
-        for entry in entries
-        if isinstance(entry.fact, BottleReceived) and entry.hash not in gone
-    ]
-    return pages().fact(mine[-1].hash, private=True) if mine else None
 
 
 def _awaited(round_ids: set[str]) -> int:

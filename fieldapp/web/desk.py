@@ -83,11 +83,12 @@ def one_round(round_id: str) -> str:
         str(request.args.get("filter", "")),
     )
     found = pages().findings(now, round_id=round_id, settled=True)
+    bottles = rounds.bottles(pages(), round_id, show) if show in rounds.LISTS else []
     return render_template(
         "desk/round.html", round=row, rule=rules.load(row["rule"]), show=show, visits=visits,
         totals=rounds.totals(pages(), round_id), figures=answers.figures(pages(), row, now),
         withheld=answers.withheld(pages(), round_id),
-        bottles=rounds.bottles(pages(), round_id, show) if show in rounds.LISTS else [],
+        bottles=bottles, held_for=_held_for(bottles) if show in ("held", "undecided") else {},
         open_findings=[_told(one, zone) for one in found if not one["settled"]],
         settled=[_told(one, zone) for one in found if one["settled"]],
         awaited=[_told(one, zone) for one in rounds.awaited(pages(), round_id, now)],
@@ -219,6 +220,20 @@ def _told(row: Row, zone: str) -> dict[str, Any]:
     if what == "cooler":
         href = url_for("coolers.one_cooler", cooler=name)
     return {**row, "sentence": said.finding(row, zone, reading().at), "href": href}
+
+
+def _held_for(bottles: Sequence[Row]) -> dict[str, list[str]]:
+    """Return of each held bottle why it waits: the clerk's words, the deviations of its record."""
+    held = {}
+    for row in bottles:
+        receipt: Any = rounds.receipt_of(pages(), row["bottle"])
+        seen = (receipt.fact.checks or {}).values() if receipt else ()
+        says = [said.of(said.CHECKS, check) for check in seen]
+        if receipt and receipt.fact.reason:
+            says.append(receipt.fact.reason)
+        found = rounds.deviations_on(pages().visit(row["visit"]), row)
+        held[row["bottle"]] = says + [said.deviation(one) for one in found]
+    return held
 
 
 def _arranged(

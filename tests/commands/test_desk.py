@@ -80,6 +80,43 @@ def test_only_a_held_bottle_waits_for_a_decision(node):
         decide(node, node.codes["Q-0401"], analyse=False)
 
 
+def undecided(node: Node) -> list[str]:
+    with node.pages() as pages:
+        return [row["bottle"] for row in rounds.bottles(pages, "spring", "undecided")]
+
+
+def test_a_deviation_that_came_after_the_receipt_waits_for_the_desk_all_the_same(node):
+    node.accept("Q-0401")
+    node.accept("Q-0402")
+    assert undecided(node) == []
+    node.deviate("Q-0401")
+    node.fill("Q-0401")
+    node.fill("Q-0402")
+    code = node.codes["Q-0401"]
+    assert undecided(node) == [code]
+    node.decide(
+        lambda pages, reading: desk.decide_analysis(
+            pages, reading, bottle=code, analyse=False, reason="flushed"
+        )
+    )
+    assert undecided(node) == []
+    assert node.bottle("Q-0401")["to_analyse"] == 0
+
+
+def test_a_late_deviation_is_not_decided_once_a_result_is_in(node):
+    node.accept("Q-0401")
+    node.report("Q-0401", "4")
+    node.deviate("Q-0401")
+    node.fill("Q-0401")
+    assert undecided(node) == []
+    with pytest.raises(desk.ResultStands):
+        node.decide(
+            lambda pages, reading: desk.decide_analysis(
+                pages, reading, bottle=node.codes["Q-0401"], analyse=False, reason="flushed"
+            )
+        )
+
+
 @pytest.mark.parametrize("reason", ["", "  "])
 def test_a_decision_needs_a_reason(node, reason):
     code = hold(node, "Q-0401")

@@ -10,7 +10,9 @@ from fieldapp.domain.facts import (
     BottleIssued,
     BottleReceived,
     BottleVoided,
+    DeviationStated,
     RoundChanged,
+    VisitOpened,
 )
 from fieldapp.projections import answers, rounds
 from tests.counter import MORNING, Node
@@ -207,6 +209,22 @@ def test_what_was_not_analysed_is_counted_by_the_direction_of_its_bias(node):
         node.record(AnalysisDecided(bottle=code, analyse=False, reason="not worth it"))
     with node.pages() as pages:
         assert answers.withheld(pages, "spring") == {"low": 1, "none": 1}
+
+
+@pytest.mark.parametrize("kind", ["first-draw", "blank"])
+@pytest.mark.parametrize("draws", [(), (1,), (2,), (1, 2)])
+def test_the_list_of_the_undecided_reads_deviations_as_every_page_does(node, kind, draws):
+    node.record(
+        VisitOpened(visit="Q-0401"),
+        DeviationStated(visit="Q-0401", step="stand", deviation="pre-flush", draws=draws),
+    )
+    node.accept("Q-0401")
+    with node.store.transaction() as db:
+        db.execute("UPDATE p_bottle SET kind = ? WHERE bottle = ?", (kind, node.codes["Q-0401"]))
+    with node.pages() as pages:
+        row = pages.bottle(node.codes["Q-0401"])
+        bears = bool(rounds.deviations_on(pages.visit("Q-0401"), row))
+        assert rounds.count(pages, "spring", "undecided") == int(bears)
 
 
 def test_a_deviation_keeps_a_result_in_where_the_rule_counts_it(node):

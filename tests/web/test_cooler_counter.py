@@ -8,7 +8,7 @@ from tests.web.reader import Reader, words
 
 PAGE, RECEIVE, OPEN, WHICH = "/bench/", "/bench/receive", "/bench/open", "/bench/which"
 IN_COOLER = "/bench/?cooler=C-AAAAAA"
-EXPECTED = ("88 214", "88 219", "packed", "of 2", "2 bottles")
+EXPECTED = ("88 214", "88 219", "2 packed", "of 2", "2 bottles")
 
 
 @pytest.fixture

@@ -41,7 +41,7 @@ def finding(node: Node) -> str:
 def test_the_desk_opens_on_rounds_with_what_is_open(desk):
     page = words(desk.read("/desk/"))
     assert "Spring round" in page
-    assert "1 open finding · 1 held bottle to decide" in page
+    assert "1 open finding · 1 bottle to decide" in page
     assert "Lead: 3.2 µg/L (running, 2 of 3)" in page
 
 
@@ -52,6 +52,20 @@ def test_a_desk_without_rounds_says_how_one_comes(tmp_path):
     page = Reader(bare, "").read("/desk/")
     assert "No round is here yet" in page
     bare.store.close()
+
+
+def test_the_list_to_decide_says_of_each_bottle_why_it_waits(desk, busy):
+    busy.deviate("Q-0402")
+    page = words(desk.read(f"{ROUND}?show=undecided"))
+    assert "cap loose The tap was flushed just before the stand (bends the result low)" in page
+
+
+def test_what_was_not_analysed_stands_beside_the_answer_by_its_direction(desk, busy):
+    busy.deviate("Q-0402")
+    code = busy.codes["Q-0402"]
+    desk.land(f"/desk/bottles/{code}", f"/desk/bottles/{code}/decide", analyse="no", reason="r")
+    page = words(desk.read(ROUND))
+    assert "Not analysed, as decided before any result: 1 that bends low." in page
 
 
 @pytest.mark.parametrize("which", [*rounds.LISTS, "findings"])
