@@ -70,10 +70,10 @@ class BottleStanding:
 
     @property
     def moved(self) -> bool:
-        """Printed for one draw and, by a person's word, stood in the place of another (R26)."""
-        if not (self.plan and self.plan.draw and self.binding):
+        """Printed for one draw and set or filled in the place of another (R26)."""
+        if not (self.plan and self.plan.draw):
             return False
-        return (self.plan.visit, self.plan.draw) != (self.binding.visit, self.binding.draw)
+        return (self.plan.visit, self.plan.draw) != (self.visit, self.draw)
 
     @property
     def purpose(self) -> str:

@@ -4,12 +4,13 @@ import base64
 import json
 import sqlite3
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import replace
 from datetime import UTC, datetime
 from typing import Any
 
 from fieldapp.domain.facts import KINDS, EntryCorrected, EntryWithdrawn, Fact
 from fieldapp.domain.facts.base import private_fields
-from fieldapp.domain.recorded import Recorded
+from fieldapp.domain.recorded import Press, Recorded
 from fieldapp.projections.tables import put
 
 _COLUMNS = (
@@ -54,7 +55,8 @@ def _correct(
     corrected = KINDS[given.kind_].read(given.data_)
     _add(db, name, {**body, "kind": given.kind_}, corrected, replaces=given.of)
     _gone(db, given.of, name, "corrected")
-    return set(corrected.subjects()) | _subjects_of(db, given.of) | {f"entry:{given.of}"}
+    entries = {f"entry:{given.of}", f"entry:{name}"}
+    return set(corrected.subjects()) | _subjects_of(db, given.of) | entries
 
 
 def _add(
@@ -116,7 +118,8 @@ def about(
         given += kinds
     if not gone:
         sql += f" AND {LIVING}"
-    return [recorded(row) for row in db.execute(f"{sql} ORDER BY f.at, f.log, f.seq", given)]
+    rows = db.execute(f"{sql} ORDER BY f.at, f.log, f.seq", given).fetchall()
+    return [_placed(db, recorded(row)) for row in rows]
 
 
 def one(db: sqlite3.Connection, name: str, *, with_private: bool = False) -> Recorded | None:
@@ -126,12 +129,53 @@ def one(db: sqlite3.Connection, name: str, *, with_private: bool = False) -> Rec
         f"{_HIDDEN if with_private else ''} WHERE f.hash = ?",
         (name,),
     ).fetchone()
-    return recorded(row) if row else None
+    return _placed(db, recorded(row)) if row else None
+
+
+def first_of(db: sqlite3.Connection, name: str) -> str:
+    """Return the entry that a chain of corrections began with; itself where it corrects none."""
+    while True:
+        row = db.execute("SELECT replaces FROM p_fact WHERE hash = ?", (name,)).fetchone()
+        if row is None or not row[0]:
+            return name
+        name = str(row[0])
+
+
+def corrections_of(db: sqlite3.Connection, first: str, *, gone: bool = False) -> list[Recorded]:
+    """Return the corrections that stand of an entry, those of its corrections too."""
+    rows = db.execute(
+        "WITH RECURSIVE chain (hash) AS (SELECT hash FROM p_fact WHERE replaces = ?"
+        " UNION SELECT n.hash FROM p_fact n JOIN chain c ON n.replaces = c.hash)"
+        f" SELECT f.hash FROM chain JOIN p_fact f USING (hash){'' if gone else f' WHERE {LIVING}'}"
+        " ORDER BY f.at, f.log, f.seq",
+        (first,),
+    ).fetchall()
+    found = (one(db, row[0]) for row in rows)
+    return [entry for entry in found if entry is not None]
+
+
+def _placed(db: sqlite3.Connection, entry: Recorded) -> Recorded:
+    """Give a correction the press of the entry it corrects, where that is here."""
+    if not entry.replaces:
+        return entry
+    row = db.execute(
+        "SELECT log, seq, at, off, mono, boot, replaces FROM p_fact WHERE hash = ?",
+        (first_of(db, entry.replaces),),
+    ).fetchone()
+    if row is None or row[6]:
+        return entry
+    at = datetime.fromisoformat(row[2]).astimezone(UTC)
+    return replace(entry, stands_for=Press(row[0], row[1], at, row[3], row[4], row[5]))
 
 
 def recorded(row: Sequence[Any]) -> Recorded:
-    """Make the recorded fact of a row, with its private part where the row carries one."""
+    """Make the recorded fact of a row, with its private part where the row carries one.
+
+    A correction's own reason is not the corrected fact's: that one stands under ``hidden``.
+    """
     hidden = reveal(row[12]) if len(row) > 12 and row[12] else {}
+    if row[10]:
+        hidden = hidden.get("hidden") or {}
     made = KINDS[row[1]].read(json.loads(row[11]), hidden)
     at = datetime.fromisoformat(row[4]).astimezone(UTC)
     return Recorded(
@@ -150,6 +194,14 @@ def private_of(db: sqlite3.Connection, priv: bytes, fact_class: type[Fact]) -> d
     row = db.execute("SELECT p FROM private WHERE h = ?", (priv,)).fetchone() if priv else None
     held = reveal(row[0]) if row else {}
     return {name: str(held.get(name, "")) for name in sorted(private_fields(fact_class))}
+
+
+def written_with(db: sqlite3.Connection, name: str) -> dict[str, Any]:
+    """Return the private part of that entry as it was written: of a correction its own reason."""
+    row = db.execute(
+        "SELECT v.p FROM p_fact f JOIN private v ON v.h = f.priv WHERE f.hash = ?", (name,)
+    ).fetchone()
+    return reveal(row[0]) if row else {}
 
 
 def hash_name(digest: bytes) -> str:

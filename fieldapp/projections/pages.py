@@ -157,6 +157,18 @@ class Pages:
         """Return one entry's fact."""
         return facts.one(self.db, name, with_private=private)
 
+    def reason(self, name: str) -> str:
+        """Return why somebody corrected or withdrew by that entry, where this node may hold it."""
+        return str(facts.written_with(self.db, name).get("reason", ""))
+
+    def first_of(self, name: str) -> str:
+        """Return the entry that a chain of corrections began with."""
+        return facts.first_of(self.db, name)
+
+    def corrections(self, name: str) -> list[Recorded]:
+        """Return every correction of an entry and of its corrections, in order."""
+        return facts.corrections_of(self.db, facts.first_of(self.db, name), gone=True)
+
     def findings(self, now: datetime, *, round_id: str = "", settled: bool = False) -> list[Row]:
         """Return the findings that are open now; with ``settled`` those that were settled too."""
         return self.rows(

@@ -37,7 +37,7 @@ from fieldapp.projections.custody import (
     due_of,
     tell_cooler,
 )
-from fieldapp.projections.facts import LIVING, about, living, one
+from fieldapp.projections.facts import about, corrections_of, first_of, living
 from fieldapp.projections.findings import write_findings
 from fieldapp.projections.tables import put
 
@@ -395,12 +395,14 @@ def tell_finding(db: sqlite3.Connection, finding: str) -> None:
 
 
 def tell_entry(db: sqlite3.Connection, of: str) -> None:
-    """Find an entry that two living corrections replace."""
-    rows = db.execute(
-        f"SELECT f.hash FROM p_fact f WHERE f.replaces = ? AND {LIVING} ORDER BY f.hash", (of,)
-    )
-    corrections = [found for row in rows.fetchall() if (found := one(db, row[0])) is not None]
-    write_findings(db, f"entry:{of}", "", "", reconcile.corrected_twice(of, corrections))
+    """Find an entry that two living corrections replace, whichever of them is told of here.
+
+    A correction of a correction takes its place, so the finding is that of the first entry.
+    """
+    first = first_of(db, of)
+    for name in {of, first}:
+        found = corrections_of(db, first) if name == first else []
+        write_findings(db, f"entry:{name}", "", "", reconcile.corrected_twice(first, found))
 
 
 def _coolers_of(told: BottleStanding) -> list[str]:

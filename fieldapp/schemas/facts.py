@@ -14,7 +14,7 @@ from typing import Any
 from marshmallow import RAISE, Schema, ValidationError, fields, validate
 
 from fieldapp.domain.codes import ALPHABET
-from fieldapp.domain.facts import Fact
+from fieldapp.domain.facts import EntryCorrected, Fact
 from fieldapp.domain.facts.base import KINDS, private_fields
 
 CODE = validate.Regexp(rf"[{ALPHABET}]{{11}}\Z", error="is not a bottle code")
@@ -66,6 +66,8 @@ def check_fact(given: Fact) -> None:
     """
     try:
         schema_of(given.kind).load({**given.data(), **given.private_part()})
+        if isinstance(given, EntryCorrected):
+            schema_of(given.kind_).load({**given.data_, **(given.hidden or {})})
     except ValidationError as fault:
         raise UnwritableFact(f"{given.kind}: {fault.normalized_messages()}") from fault
 

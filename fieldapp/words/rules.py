@@ -61,6 +61,23 @@ RULES: dict[str, str] = {
     "no-such-draw": N_("This visit has no draw {draw}."),
     "crossed-times": N_("The first time is later than the second. Exchange them."),
     "nothing-said": N_("Choose when water last ran, or say that nobody knows."),
+    "not-correctable": N_(
+        "That is not corrected. Record what is right beside it, or settle the finding."
+    ),
+    "not-yours-to-correct": N_(
+        "Whoever recorded it corrects it, or the coordinator. Tell them what is right."
+    ),
+    "corrected-since": N_(
+        "It was corrected or taken back since this page was drawn. Look at what stands now."
+    ),
+    "correction-unsaid": N_("Say in a few words why it is corrected."),
+    "nothing-differs": N_("Nothing here differs from what is recorded, so nothing was corrected."),
+    "volume-out-of-range": N_(
+        "{value} is no volume of a bottle. Type millilitres, or leave it empty if nobody measured."
+    ),
+    "number-in-use": N_(
+        "The laboratory's number {number} stands on bottle {other} already. Look at both stickers."
+    ),
     "run-unsaid": N_("Say when the tap was opened and when it was shut."),
     "reason-missing": N_(
         "Say why in a few words: a bottle is never held or refused without a reason."
@@ -97,6 +114,10 @@ RULES: dict[str, str] = {
     ),
     "bad-picture-damaged": N_(
         "That picture is damaged or cut short. Take it again; nothing was kept of it."
+    ),
+    "strange-subject": N_(
+        "A photo here is of the visit, of one of its bottles or of a difference that was noted. "
+        "Choose one of those shown."
     ),
     "no-room": N_(
         "The disk has too little room left for photos, so this one was not kept. Everything else "

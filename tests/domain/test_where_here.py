@@ -1,10 +1,13 @@
 """The thirty-minute stand: water runs to waste, stands in the kitchen, two litres are drawn."""
 
+from dataclasses import replace
 from datetime import timedelta
 
 import pytest
 
 from fieldapp.domain import facts
+from fieldapp.domain.protocols import find, read_protocol
+from fieldapp.domain.recorded import Press
 from fieldapp.domain.timetext import format_utc
 from tests.domain.walking import Kitchen
 
@@ -174,6 +177,25 @@ def test_a_yes_after_the_draw_says_that_water_ran_in_the_stand():
     kitchen.obey("yes")
 
     assert kitchen.deviations() == [("tap-used-in-stand", (1, 2))]
+
+
+def test_a_corrected_draw_is_read_by_the_clock_of_the_press_it_corrects():
+    run_on = '[step.fill]\ndraw = 2\nvolume_ml = 1000\nkind = "standing"\nrunning_on = true\n'
+    document = find("thirty-minute").toml.replace(run_on, run_on.replace("running_on = true\n", ""))
+    kitchen = Kitchen("thirty-minute", TWO, document=read_protocol(document)).until("fill")
+    kitchen.obey()
+    filled = next(e for e in kitchen.entries if isinstance(e.fact, facts.BottleFilled))
+    before = kitchen.where().stand
+    assert before.basis == "measured"
+    kitchen.wait(hours=2).restart()
+    made = kitchen.correct(filled, fill="below")
+    assert kitchen.where().stand.basis == "stated"  # of an entry that is not here
+    kitchen.withdraw(made)
+    press = Press(filled.log, filled.seq, filled.at, filled.off, filled.mono, filled.boot)
+    kitchen.entries.append(replace(made, stands_for=press))
+
+    assert kitchen.where().stand == before
+    assert kitchen.kinds() == ["fill-below"]
 
 
 @pytest.mark.parametrize(("minutes", "due"), [(60, "set"), (61, "ask")])

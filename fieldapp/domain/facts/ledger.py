@@ -1,6 +1,7 @@
 """Facts about the record itself: logs, corrections, clocks."""
 
 from collections.abc import Mapping
+from dataclasses import field
 from typing import Any
 
 from fieldapp.domain.facts.base import ALL, CENTRAL, ROUTE_LAB, Done, Fact, fact, private
@@ -48,12 +49,17 @@ class ClockChecked(Fact):
 
 @fact("entry.corrected", place="ledger", reach=ROUTE_LAB)
 class EntryCorrected(Done):
-    """New data for an earlier entry; the old one stays and is shown struck through."""
+    """New data for an earlier entry; the old one stays and is shown struck through.
+
+    ``data`` is the whole new data and brings the time along at which the thing was done;
+    ``hidden`` the whole private part, where whoever corrected held it.
+    """
 
     of: str
     kind_: str
     data_: Mapping[str, Any]
     reason: str = private()
+    hidden: Mapping[str, Any] | None = field(default=None, metadata={"private": True})
 
 
 @fact("entry.withdrawn", place="ledger", reach=ROUTE_LAB)

@@ -103,7 +103,8 @@ class Seen:
         self.comings: list[Noted] = []
         self.shut: Noted | None = None
         self.closed: Noted | None = None
-        self.entries = in_order({one.hash: one for one in recorded}.values())
+        # a correction stands where the entry stood that it corrects
+        self.entries = in_order({one.hash: one.in_place() for one in recorded}.values())
         for position, entry in enumerate(self.entries):
             self._take(entry, position, visit)
 
@@ -257,7 +258,10 @@ TAKES: dict[type[Fact], Callable[[Seen, Noted], None]] = {
 def noted(entry: Recorded, position: int) -> Noted:
     """Return the fact with its time; one whose stated time cannot be read counts as pressed."""
     stated = moment(entry.fact.done_at) if isinstance(entry.fact, Done) else None
-    mark = None if stated or entry.replaces else Mark(entry.at, entry.mono, entry.boot)
+    # a correction that brings the time of the press along was read by that press's clock
+    kept = entry.stands_for is not None and stated == entry.at
+    pressed = kept or not (stated or entry.replaces)
+    mark = Mark(entry.at, entry.mono, entry.boot) if pressed else None
     sure = stated is not None or not entry.replaces
     return Noted(position, stated or entry.at, mark, sure, entry)
 
