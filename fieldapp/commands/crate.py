@@ -5,6 +5,7 @@ refused: ``already`` packs a bottle that by the record holds no water.
 """
 
 from collections.abc import Sequence
+from datetime import timedelta
 
 from fieldapp.commands.asked import NOW, When, check_past, planned
 from fieldapp.domain.bottles import in_order
@@ -20,6 +21,9 @@ from fieldapp.projections.pages import Pages, Row
 
 WHEREABOUTS = ("with-me", "left-behind", "broken", "elsewhere")
 """Where a filled bottle is that is in no cooler; the first stays with the sampler."""
+
+TAKE_BACK_WITHIN = timedelta(seconds=10)
+"""The least time for which a press can be taken back, though another follows it (R45)."""
 
 OPEN = ("packing", "reopened")
 """States of a cooler that takes bottles."""
@@ -116,17 +120,18 @@ def pack(
 
 
 def take_back(pages: Pages, reading: Reading, route: str, *, of: str, by: str) -> list[Fact]:
-    """Withdraw the latest press on the crate and its coolers, all its entries (R45).
+    """Withdraw a press on the crate and its coolers, all its entries: the latest, or a young one.
 
     Raises:
         Unknown: No such press is on this route.
-        StepOver: Something was recorded since, or it is another person's.
+        StepOver: Something followed and ten seconds are over, or it is another person's (R45).
     """
     entry = crates.latest_press(pages, route)
     found = pages.fact(of)
     if found is None or f"route:{route}" not in found.fact.subjects():
         raise Unknown(what="entry", name=of[:8])
-    if entry is None or entry.act != found.act or entry.by != by:
+    follows = entry is None or entry.act != found.act
+    if found.by != by or (follows and reading.at - found.at > TAKE_BACK_WITHIN):
         raise StepOver(at=format_utc(found.at), route=route)
     pressed = [
         one
