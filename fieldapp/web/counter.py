@@ -10,7 +10,7 @@ from flask import Response, g, jsonify, render_template, session
 from fieldapp import words
 from fieldapp.commands import bench, told
 from fieldapp.domain.codes import BadCode, grouped, normalise
-from fieldapp.domain.facts import BottleReceived
+from fieldapp.domain.facts import BottleReceived, CoolerOpened
 from fieldapp.domain.recorded import Recorded
 from fieldapp.projections import arrivals, rounds
 from fieldapp.projections.pages import Row
@@ -36,7 +36,7 @@ def show(
         else rounds.latest_receipts(pages(), _midnight(zone))
     )
     listed = [_listed(entry) for entry in receipts]
-    mine = rounds.latest_press_by(pages(), person())
+    mine = _to_take_back()
     given = {
         "answer": answer,
         "form": form or {},
@@ -100,6 +100,12 @@ def strayed(fault: bench.coolers.OtherCooler, zone: str) -> Answer:
         "other": own,
         "other_title": cooler_words.title(own, zone),
     }
+
+
+def _to_take_back() -> Recorded | None:
+    """Return the last receipt or opening of this person, if nothing came of theirs since."""
+    last = rounds.latest_press_by(pages(), person())
+    return last if last and isinstance(last.fact, BottleReceived | CoolerOpened) else None
 
 
 def _latest_words(entry: Recorded | None, zone: str) -> str:

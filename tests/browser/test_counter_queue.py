@@ -11,6 +11,7 @@ from playwright.sync_api import Page, expect
 from werkzeug.serving import make_server
 
 from fieldapp.web import create_app
+from tests.browser.test_accessible import violations
 from tests.counter import Node
 
 MANY = 40
@@ -178,6 +179,24 @@ def test_a_bottle_of_another_cooler_is_kept_with_a_note_by_one_and_enter(node, c
     scan(cooler, "came in the same van")
     expect(cooler.locator(".told--in")).to_contain_text("Kept here with your note")
     assert outcome(node, second) == "accepted"
+
+
+@pytest.mark.parametrize("scheme", ["light", "dark"])
+def test_every_answer_of_an_open_cooler_passes_axe(node, cooler, scheme):
+    first, second = node.codes.values()
+    cooler.emulate_media(color_scheme=scheme, reduced_motion="reduce")
+    for text, says in (
+        (second, "still on the road"),
+        ("COUNTER LEAK", "Scan it now"),
+        (first, "The Desk decides"),
+        ("COUNTER UNDO", "It is not received now"),
+    ):
+        scan(cooler, text)
+        expect(cooler.locator(".told--new")).to_contain_text(says)
+        assert violations(cooler) == [], text
+    cooler.click("text=Finish this cooler")
+    expect(cooler.locator("[data-word=finish]")).to_contain_text("1 missing")
+    assert violations(cooler) == []
 
 
 def test_a_card_is_for_the_next_bottle_however_fast_they_come(node, counter):

@@ -159,6 +159,13 @@ def test_undo_takes_a_waiting_card_back_before_any_receipt(packed, reader):
     assert packed.bottle("Q-0401")["outcome"] == "accepted"
 
 
+def test_after_an_undo_nothing_more_is_offered_to_take_back(packed, reader):
+    open_it(reader)
+    reader.land(IN_COOLER, RECEIVE, bottle=packed.codes["Q-0401"])
+    assert 'class="undo"' in reader.read(IN_COOLER)
+    assert 'class="undo"' not in reader.land(IN_COOLER, RECEIVE, bottle=text_of("undo"))
+
+
 def test_undo_takes_the_last_receipt_back_once(packed, reader):
     open_it(reader)
     for visit in ("Q-0401", "Q-0402"):
