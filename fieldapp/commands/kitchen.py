@@ -231,7 +231,8 @@ def take_back(
     is_latest = bool(acts) and acts[-1].act == entry.act
     if not is_latest and reading.at - entry.at > TAKE_BACK_WITHIN:
         raise TakenBackLate()
-    pressed = [one for one in acts if one.act == entry.act]
+    # a signature counts the crate in the same press
+    pressed = [one for one in in_order(pages.recorded(visit)) if one.act == entry.act]
     pressed += _voided_with(pages, visit, entry.act)
     return [EntryWithdrawn(of=one.hash, reason=reason) for one in pressed]
 

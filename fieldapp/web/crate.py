@@ -15,7 +15,7 @@ from fieldapp.projections import crates
 from fieldapp.projections.pages import Pages, Row
 from fieldapp.store import ActDiffers
 from fieldapp.web import crate_forms as forms
-from fieldapp.web import custody_words, errors, said, spoken
+from fieldapp.web import custody_words, said, spoken
 from fieldapp.web.context import NoPerson, give_back, load, pages, perform, person
 from fieldapp.web.kitchen_forms import when_of
 
@@ -156,9 +156,7 @@ def _bar(fault: RuleBroken) -> dict[str, Any]:
     """Return what stands against a press, and the form by which it is recorded all the same."""
     codes = fault.values.get("codes")
     values = {"codes": ", ".join(map(said.grouped, codes))} if codes else {}
-    says = errors.sentence(type(fault)(**{**fault.values, **values}))
-    if isinstance(code := fault.values.get("code"), str):
-        says = says.replace(code, said.grouped(code))
+    says = spoken.broken(type(fault)(**{**fault.values, **values}))
     sent = {k: v for k, v in request.form.items() if k not in ("act", "token", "already")}
     done = spoken.of(ALREADY, fault.kind) if fault.kind in ALREADY else ""
     return {"says": says, "sent": sent, "done": done, "done_at": request.path}
