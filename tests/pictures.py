@@ -10,6 +10,8 @@ from PIL import Image, ImageDraw, ImageFilter
 ORIENTATION, GPS, MAKE, TAKEN = 0x0112, 0x8825, 0x010F, 0x9003
 PLACE = {1: "N", 2: (43.0, 36.0, 51.9), 3: "W", 4: (116.0, 12.0, 18.3)}
 """A place in degrees, minutes and seconds, as a camera writes it."""
+HEIC = b"\0\0\0\x18ftypheic\0\0\0\0mif1heic" + b"\0" * 200
+"""The first bytes of a picture as some cameras write it."""
 
 
 def marked(width: int = 600, height: int = 400) -> Image.Image:

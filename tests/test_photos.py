@@ -13,7 +13,7 @@ from fieldapp import photos
 from fieldapp.photos import BadPicture, NoRoom
 from sync.shelf import Shelf
 
-from .pictures import GPS, bomb, encoded, from_camera, jpeg, marked
+from .pictures import GPS, HEIC, bomb, encoded, from_camera, jpeg, marked
 
 RED = (254, 0, 0)
 
@@ -110,7 +110,6 @@ def test_what_is_see_through_is_white_and_not_black(tmp_path):
     assert near(kept(encoded(clear, "PNG"), tmp_path).getpixel((30, 20)), (255, 255, 255))
 
 
-HEIC = b"\0\0\0\x18ftypheic\0\0\0\0mif1heic" + b"\0" * 200
 GIF = encoded(Image.new("P", (8, 8)), "GIF")
 NO_PICTURES = {
     "nothing": (b"", "empty"),

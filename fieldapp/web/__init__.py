@@ -20,7 +20,9 @@ from fieldapp.web import (
     errors,
     kitchen,
     people,
+    photos,
     replication,
+    scan,
     shown,
     state,
     work,
@@ -58,7 +60,19 @@ def create_app(store: Store, *, token: str = "") -> Flask:
     app.extensions["tapwitness.store"] = store
     app.extensions["tapwitness.token"] = token
     _serve_static(app, static)
-    for part in (people, kitchen, crate, bench, desk, coolers, replication, work, state):
+    for part in (
+        people,
+        kitchen,
+        crate,
+        photos,
+        scan,
+        bench,
+        desk,
+        coolers,
+        replication,
+        work,
+        state,
+    ):
         app.register_blueprint(part.bp)
     app.before_request(_guard)
     app.after_request(_headers)

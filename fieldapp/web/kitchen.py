@@ -23,6 +23,7 @@ from fieldapp.web import kitchen_press as pressed
 from fieldapp.web import spoken
 from fieldapp.web.context import load, pages, person, reading
 from fieldapp.web.kitchen_press import Answer, act, act_timed, press
+from fieldapp.web.scan import photographed
 
 bp = Blueprint("kitchen", __name__, url_prefix="/kitchen")
 
@@ -166,12 +167,14 @@ def state_last_use(visit: str) -> Answer:
 
 
 @bp.post("/visits/<visit>/set")
+@photographed("code", pressed.refused)
 def set_bottle(visit: str) -> Answer:
     """Stand a scanned bottle in its place."""
     return act(visit, forms.SetForm, drawing.set_bottle, "code")
 
 
 @bp.post("/visits/<visit>/swap")
+@photographed("code", pressed.refused)
 def swap_bottle(visit: str) -> Answer:
     """Take another bottle for a draw."""
     return act(visit, forms.SwapForm, drawing.swap_bottle, "draw", "code", "why")
@@ -223,6 +226,7 @@ def fill(visit: str) -> Answer:
 
 
 @bp.post("/visits/<visit>/blank")
+@photographed("code", pressed.refused)
 def blank(visit: str) -> Answer:
     """Pour the field blank."""
     return act(visit, forms.BlankForm, drawing.blank, "water_lot", "code")

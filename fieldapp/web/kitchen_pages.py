@@ -27,7 +27,7 @@ from fieldapp.domain.recorded import Recorded
 from fieldapp.domain.timetext import chips
 from fieldapp.projections import crates
 from fieldapp.projections.pages import Row
-from fieldapp.web import said, spoken
+from fieldapp.web import pictures, said, spoken
 from fieldapp.web.context import pages, person, reading
 from fieldapp.web.rail import rail
 
@@ -94,6 +94,7 @@ def gather(visit: str) -> dict[str, Any]:
         "left_says": _up(told.earliest_draw) if told.earliest_draw else ("", ""),
         "meanwhile": _meanwhile(plan.route, visit) if due.kind == "wait" else None,
         **_taken(told, recorded),
+        "photos": pictures.of_visit(visit, private=told.state != "closed"),
         "back": url_for("kitchen.route", route=plan.route),
     }
 

@@ -148,6 +148,7 @@ PRESSES = {
     "draw.poured": N_("Poured away"),
     "deviation.stated": N_("Difference noted"),
     "visit.signed": N_("Signed"),
+    "photo.taken": N_("Photo saved"),
     "visit.closed": N_("Visit closed"),
     "crate.counted": N_("Crate counted"),
     "bottle.located": N_("Whereabouts noted"),

@@ -32,6 +32,9 @@ def line() -> list[dict[str, str]]:
         at = shown.clock(known, zone(), reading().at)
         says = words.gettext("Received by central {at}").format(at=at)
         said.append({"says": says, "tone": "good"})
+    if photos := node.photos_waiting():
+        says = words.gettext("Photo waiting ({n})").format(n=len(photos))
+        said.append({"says": says, "tone": "quiet"})
     return said
 
 
@@ -60,10 +63,11 @@ def waiting() -> str:
         " LEFT JOIN acknowledgement a ON a.log = f.log"
         " WHERE f.seq > COALESCE(a.seq, 0) ORDER BY f.at DESC LIMIT 200"
     )
-    pin = node.central()
+    pin, photos = node.central(), node.photos_waiting()
     return render_template(
         "state.html", rows=rows, waiting=node.waiting() if pin else 0, central=pin, zone=zone(),
-        dev=node.dev, says=request.args.get("says", ""), unread=pages().unread(),
+        photos=photos if pin else {}, dev=node.dev, says=request.args.get("says", ""),
+        unread=pages().unread(),
     )  # fmt: skip
 
 
@@ -74,7 +78,8 @@ def send() -> Response:
 
     try:
         report = send_and_fetch(store())
-        says = words.gettext("Sent {pushed}, fetched {pulled}.").format(**report)
+        says = words.gettext("Sent {pushed}, fetched {pulled}, photos {photos}.").format(**report)
+        says = " ".join(filter(None, [says, report["photos_say"]]))
     except Exception as fault:  # any trouble on the line is said, never a broken page
         says = str(fault)
     return redirect(url_for(".waiting", says=says), code=303)

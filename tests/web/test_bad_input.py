@@ -6,6 +6,7 @@ import pytest
 
 from tests import nodes
 from tests.web.visitor import TOKEN, Visitor, a_visitor, endpoints, rule_of, words_of
+from tests.pictures import HEIC, bomb, jpeg, marked, qr
 
 TOO_LONG = "x" * 3000
 NO_TIME = ({"done_local": "half past six"}, 422, "Type a date and a time")
@@ -14,6 +15,12 @@ STRANGE_TELLER = ({"told_by": "policeman"}, 422, "told by")
 OLD_PAGE = ({"act": None}, 422, "Open it again")
 
 Row = tuple[dict[str, Any], int, str]
+
+def brought(data: bytes) -> tuple[io.BytesIO, str]:
+    """Return a file as a form brings it, good for one request."""
+    return io.BytesIO(data), "IMG_0001.JPG"
+
+
 
 BAD: dict[str, list[Row]] = {
     "people.choose": [
@@ -171,6 +178,8 @@ BAD: dict[str, list[Row]] = {
         ({"code": "2HB4X90TC7X"}, 422, "does not agree"),
         ({"code": "2HB4X90TC7"}, 422, "characters"),
     ],
+        ({"code": "", "picture": brought(jpeg(marked()))}, 422, "No bottle code can be read"),
+        ({"code": "", "picture": brought(b"a text")}, 422, "no picture this device can read"),
     "kitchen.swap_bottle": [
         ({"draw": "first", "code": "00000000000", "why": "broken"}, 422, "draw"),
         ({"draw": "1", "code": "2HB4X90TC7X", "why": "broken"}, 422, "does not agree"),
@@ -227,6 +236,25 @@ BAD: dict[str, list[Row]] = {
         ({"of": None}, 422, "of"),
     ],
     "state.send": [({"token": None}, 400, "Open it again")],
+    "photos.take": [
+        ({}, 422, "No picture came"),
+        ({"photo": brought(b"a text")}, 422, "no picture this device can read"),
+        ({"photo": brought(HEIC)}, 422, "HEIC"),
+        ({"photo": brought(bomb())}, 422, "million pixels"),
+        ({"photo": brought(jpeg(marked())[:500])}, 422, "damaged or cut short"),
+        ({"photo": brought(jpeg(marked())), "about": "visit:V-0402"}, 422, "A photo here is of"),
+        ({"photo": brought(jpeg(marked())), "about": TOO_LONG}, 422, "about"),
+        ({"photo": brought(jpeg(marked())), "caption": TOO_LONG}, 422, "at most 500"),
+        ({"photo": brought(jpeg(marked())), **NO_TIME[0]}, *NO_TIME[1:]),
+        ({"photo": brought(jpeg(marked())), **OLD_PAGE[0]}, *OLD_PAGE[1:]),
+    ],
+    "scan.read": [
+        ({}, 422, "No picture came"),
+        ({"picture": brought(b"a text")}, 422, "no picture this device can read"),
+        ({"picture": brought(jpeg(marked()))}, 422, "No bottle code can be read"),
+        ({"picture": brought(jpeg(qr("SHELF 7")))}, 422, "is of no bottle"),
+        ({"picture": brought(jpeg(qr("2HB4X90TC7T"))), "token": None}, 400, "Open it again"),
+    ],
 }  # fmt: skip
 """What is sent, the code of the answer, and a word of its sentence (``|`` parts what will do)."""
 

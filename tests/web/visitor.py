@@ -12,12 +12,14 @@ from flask import Flask
 from werkzeug.routing import Rule
 from werkzeug.test import TestResponse
 
+from fieldapp import photos
 from fieldapp.domain import facts
 from fieldapp.identity import new_act
 from fieldapp.store import Store
 from fieldapp.web import create_app
 from tests import nodes
 from tests.nodes import press
+from tests.pictures import jpeg, marked
 
 TOKEN = "of-a-command-line"
 VISIT = "V-0401"
@@ -37,6 +39,7 @@ class Visitor:
         self.codes = nodes.issue(store)
         self.finding = self._find()
         press(store, facts.BottlePacked(bottle=self.codes[1], cooler=COOLER, route=nodes.ROUTE))
+        self.photo = self._photograph()
         self.app: Flask = create_app(store, token=TOKEN)
         self.client = self.app.test_client()
         self.token = ""
@@ -51,6 +54,16 @@ class Visitor:
             (found,) = pages.findings(nodes.MORNING)
         return str(found["finding"])
 
+    def _photograph(self) -> str:
+        """Keep a picture and note it of the visit; return its hash."""
+        kept = photos.keep(jpeg(marked(60, 40)), self.store.folder)
+        about = f"visit:{VISIT}"
+        taken = facts.PhotoTaken(
+            about=about, photo=kept.sha256, n=kept.n, media=kept.media, visit=VISIT
+        )
+        press(self.store, taken)
+        return kept.sha256
+
     @property
     def static(self) -> str:
         """The name of a file that is served."""
@@ -60,7 +73,8 @@ class Visitor:
         """Return a path of that route, filled with what this node holds."""
         known = {
             "visit": VISIT, "route": nodes.ROUTE, "round_id": nodes.ROUND, "bottle": self.codes[0],
-            "finding_id": self.finding, "cooler": COOLER, "name": self.static, "_what": "session",
+            "finding_id": self.finding, "sha256": self.photo, "cooler": COOLER,
+            "name": self.static, "_what": "session",
         }  # fmt: skip
         if rule.endpoint == "work.hand_in":
             known["name"] = "labels"

@@ -173,7 +173,7 @@ class VisitClosed(Done):
 
 @fact("photo.taken", place="kitchen", reach=ROUTE)
 class PhotoTaken(Done):
-    """A photo note. ``about`` is a subject (``visit:…``, ``bottle:…``, ``cooler:…``).
+    """A photo note. ``about`` is a subject (``visit:…``, ``bottle:…``, ``entry:…``, ``cooler:…``).
 
     ``photo`` is the SHA-256 of the picture as kept, ``n`` its bytes, ``media`` its type; the
     store repeats them in the entry's ``blobs``, by which sync fetches the picture.
@@ -186,6 +186,10 @@ class PhotoTaken(Done):
     visit: str = ""
     route: str = ""
     caption: str = private()
+
+    def subjects(self) -> tuple[str, ...]:
+        """Return the visit, and what the picture is of."""
+        return tuple(dict.fromkeys((*super().subjects(), self.about)))
 
     def blobs(self) -> tuple[dict[str, Any], ...]:
         """Return the picture as an entry names it."""
