@@ -1,12 +1,13 @@
 """Bad input of every form: a clear sentence, nothing recorded. A form without a row fails."""
 
+import io
 from typing import Any
 
 import pytest
 
 from tests import nodes
-from tests.web.visitor import TOKEN, Visitor, a_visitor, endpoints, rule_of, words_of
 from tests.pictures import HEIC, bomb, jpeg, marked, qr
+from tests.web.visitor import TOKEN, Visitor, a_visitor, endpoints, rule_of, words_of
 
 TOO_LONG = "x" * 3000
 NO_TIME = ({"done_local": "half past six"}, 422, "Type a date and a time")
@@ -14,13 +15,13 @@ AHEAD = ({"done_local": "2031-05-04T06:30"}, 422, "lies ahead of this device's c
 STRANGE_TELLER = ({"told_by": "policeman"}, 422, "told by")
 OLD_PAGE = ({"act": None}, 422, "Open it again")
 
-Row = tuple[dict[str, Any], int, str]
 
 def brought(data: bytes) -> tuple[io.BytesIO, str]:
     """Return a file as a form brings it, good for one request."""
     return io.BytesIO(data), "IMG_0001.JPG"
 
 
+Row = tuple[dict[str, Any], int, str]
 
 BAD: dict[str, list[Row]] = {
     "people.choose": [
@@ -177,9 +178,9 @@ BAD: dict[str, list[Row]] = {
         ({"code": TOO_LONG}, 422, "Scan or type"),
         ({"code": "2HB4X90TC7X"}, 422, "does not agree"),
         ({"code": "2HB4X90TC7"}, 422, "characters"),
-    ],
         ({"code": "", "picture": brought(jpeg(marked()))}, 422, "No bottle code can be read"),
         ({"code": "", "picture": brought(b"a text")}, 422, "no picture this device can read"),
+    ],
     "kitchen.swap_bottle": [
         ({"draw": "first", "code": "00000000000", "why": "broken"}, 422, "draw"),
         ({"draw": "1", "code": "2HB4X90TC7X", "why": "broken"}, 422, "does not agree"),
@@ -235,7 +236,6 @@ BAD: dict[str, list[Row]] = {
         ({"of": "x" * 43}, 404, "does not know"),
         ({"of": None}, 422, "of"),
     ],
-    "state.send": [({"token": None}, 400, "Open it again")],
     "photos.take": [
         ({}, 422, "No picture came"),
         ({"photo": brought(b"a text")}, 422, "no picture this device can read"),
@@ -255,6 +255,7 @@ BAD: dict[str, list[Row]] = {
         ({"picture": brought(jpeg(qr("SHELF 7")))}, 422, "is of no bottle"),
         ({"picture": brought(jpeg(qr("2HB4X90TC7T"))), "token": None}, 400, "Open it again"),
     ],
+    "state.send": [({"token": None}, 400, "Open it again")],
 }  # fmt: skip
 """What is sent, the code of the answer, and a word of its sentence (``|`` parts what will do)."""
 
