@@ -27,6 +27,14 @@ TO = {
     "colleague": N_("a colleague"),
 }
 
+TO_SHORT = {
+    "laboratory": N_("Laboratory"),
+    "courier": N_("Courier"),
+    "night-box": N_("Night box"),
+    "colleague": N_("Colleague"),
+}
+"""The same on a button."""
+
 WHEREABOUTS = {
     "with-me": N_("In the crate, for the next cooler"),
     "left-behind": N_("Left behind"),
