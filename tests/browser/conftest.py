@@ -11,7 +11,7 @@ from playwright.sync_api import Browser, BrowserContext, Page, sync_playwright
 
 from fieldapp import work
 from fieldapp.domain.codes import new_code
-from fieldapp.domain.facts import BottleReceived
+from fieldapp.domain.facts import BottlePacked, BottleReceived, CoolerSealed, Fact
 from fieldapp.identity import new_act
 from fieldapp.places import shipped
 from fieldapp.reading.rounds import RoundFile, read_round
@@ -28,6 +28,7 @@ FLAGS = [
 ]  # fmt: skip
 PHONE = {"width": 360, "height": 740}
 DESKTOP = {"width": 1280, "height": 800}
+COOLER = "C-000003"
 
 
 @dataclass
@@ -122,13 +123,26 @@ def worked(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Day]:
             finding = pages.findings(store.clock.read().at)[0]["finding"]
             rows = pages.bottles(round_id=planned.round.round)
     codes = {(str(row["visit"]), int(row["draw"])): str(row["bottle"]) for row in rows}
-    found = {"finding": finding, "bottle": codes["V-0401", 1]}
+    found = {"finding": finding, "bottle": codes["V-0401", 1], "cooler": COOLER}
+    for name in ("central", "tablet"):
+        with Store.open(folder / name) as store:
+            facts = _cooler_of(found["bottle"], planned.routes[0].route)
+            store.act(new_act(), {}, lambda _pages, _reading, made=facts: made, by="sampler-1")
     time = Time(planned.round.zone, [folder / "central", folder / "tablet"])
     with (
         Process("central", folder / "central") as central,
         Process("serve", folder / "tablet") as tablet,
     ):
         yield Day(central.url, tablet.url, folder, time, codes, planned, found)
+
+
+def _cooler_of(bottle: str, route: str) -> list[Fact]:
+    """Return the facts of one bottle packed and sealed into a cooler."""
+    where = {"cooler": COOLER, "route": route, "box": "3"}
+    return [
+        BottlePacked(bottle=bottle, **where),
+        CoolerSealed(seals=("88 214",), count=1, **where),
+    ]
 
 
 def choose(page: Page, root: str, person: str) -> None:

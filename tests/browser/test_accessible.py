@@ -20,6 +20,8 @@ NOT_PAGES = {
     "static_file": "styles and scripts",
     "replication.door": "the door for devices, by POST",
     "bench.cards": "a page to print, as PDF",
+    "coolers.record": "a page to print, as PDF",
+    "coolers.sheet": "the signed sheet as it was kept",
     "desk.find": "redirects to a bottle or a site",
 }
 ROWS = {
@@ -31,12 +33,16 @@ ROWS = {
     "kitchen.different": ("tablet", "/kitchen/visits/V-0401/different"),
     "kitchen.done": ("tablet", "/kitchen/visits/V-0401/done"),
     "kitchen.last_use": ("tablet", "/kitchen/visits/V-0401/last-use"),
+    "crate.count": ("tablet", "/kitchen/routes/R-0504/count"),
+    "crate.cooler": ("tablet", "/kitchen/coolers/{cooler}"),
     "bench.index": ("central", "/bench/"),
     "bench.open_form": ("central", "/bench/open"),
     "bench.which": ("central", "/bench/which?seals=88214&whole=whole&count=17"),
     "desk.index": ("central", "/desk/"),
     "desk.one_round": ("central", "/desk/rounds/quillhaven-2027-05"),
     "desk.one_bottle": ("central", "/desk/bottles/{bottle}"),
+    "coolers.of_round": ("central", "/desk/rounds/quillhaven-2027-05/coolers"),
+    "coolers.one_cooler": ("central", "/desk/coolers/{cooler}"),
     "desk.one_finding": ("central", "/desk/findings/{finding}"),
 }
 
