@@ -17,6 +17,7 @@ from fieldapp.domain.codes import grouped
 from fieldapp.printing.labels import printable
 from fieldapp.printing.sheets import POINTS_A_MM, CannotPrint
 from fieldapp.words import gettext as _
+from fieldapp.words import ngettext
 
 if TYPE_CHECKING:
     from reportlab.pdfgen.canvas import Canvas
@@ -35,7 +36,7 @@ ELLIPSIS = "..."
 
 @dataclass(frozen=True)
 class Line:
-    """One bottle. ``struck`` are former values of ``collected``, shown struck through.
+    """One bottle. ``struck`` are former values of ``collected``, the last two shown struck through.
 
     ``stood`` and ``deviations`` are short words; all texts are the reader's language.
     """
@@ -144,7 +145,7 @@ def _draw_head(canvas: "Canvas", record: CustodyRecord, top: float, number: int,
     if record.broken:
         _say(canvas, _("broken:"), after + 3, y, 9)
         _struck(canvas, ", ".join(record.broken), after + 17, y, 9)
-    count = _("{n} bottles").format(n=len(record.lines))
+    count = ngettext("{n} bottle", "{n} bottles", len(record.lines)).format(n=len(record.lines))
     _say(canvas, count, 118, y, 10, BOLD)
     _pair(canvas, _("Handed over"), record.handed or _("not yet"), 145, y, 112)
 
@@ -191,7 +192,7 @@ def _draw_cell(
         _wrap(canvas, line.deviations, x, base, wide, tall)
         return
     if column.struck(line):
-        _struck(canvas, ", ".join(line.struck), x, base + tall * 0.58, 4.8)
+        _struck(canvas, ", ".join(line.struck[-2:]), x, base + tall * 0.58, 4.8)
     text = {
         "code": grouped(line.code),
         "place": ", ".join(filter(None, (line.site, line.tap))),
