@@ -115,6 +115,8 @@ def receive(
         NumberIsCard: The laboratory number is the text of a card of the counter.
     """
     code = normalise(bottle)
+    if is_card(laboratory_number):
+        raise NumberIsCard(number=laboratory_number)
     row = pages.bottle(code)
     before = _standing(pages, row, cooler)
     found = Checked(outcome, tuple(checks), reason)
@@ -283,8 +285,6 @@ def _laboratory(pages: Pages, row: Row | None) -> str:
 
 def _free_number(pages: Pages, number: str, code: str, laboratory: str) -> None:
     """Bar a number that the same laboratory gave to another bottle; two may count alike."""
-    if is_card(number):
-        raise NumberIsCard(number=number)
     for other in pages.by_number(number) if number else ():
         if other != code and _laboratory(pages, pages.bottle(other)) == laboratory:
             raise NumberTaken(number=number, other=other)
