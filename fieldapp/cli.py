@@ -368,10 +368,11 @@ def verify(folder: Path, as_json: bool) -> None:
         first = {"log": fault.log, "seq": fault.seq, "says": fault.says} if fault else None
         click.echo(json.dumps({
             "chain": "broken" if fault else "intact", "entries": report.entries,
-            "logs": report.logs, "first_fault": first,
+            "logs": report.logs, "photos": report.blobs, "first_fault": first,
         }))  # fmt: skip
     elif fault is None:
-        click.echo(f"{report.entries} entries in {report.logs} logs: every one holds.")
+        photos = f", {report.blobs} photos" if report.blobs else ""
+        click.echo(f"{report.entries} entries in {report.logs} logs{photos}: every one holds.")
     if fault is not None:
         place = f"log {fault.log}, entry {fault.seq}: " if fault.log else ""
         click.echo(f"{place}{fault.says}", err=True)

@@ -17,6 +17,8 @@ from sync.errors import BadEntry, SyncError
 from sync.folder import QuietHold, read_anchors
 from sync.keys import key_id
 from sync.rows import ROW, entry_of, with_private
+from sync.shelf import FOLDER as BLOBS
+from sync.shelf import Shelf
 
 DATABASE = "ledger.db"
 CENTRAL = "central.json"
@@ -35,11 +37,12 @@ class Fault:
 
 @dataclass(frozen=True, slots=True)
 class Report:
-    """What was verified: entries and logs that hold, and the first fault or None."""
+    """What was verified: entries, logs and blobs that hold, and the first fault or None."""
 
     entries: int
     logs: int
     first_fault: Fault | None
+    blobs: int = 0
 
 
 class _BrokenError(Exception):
@@ -58,19 +61,22 @@ def verify_folder(
 
     Whole logs are checked from their first entry to their anchor, borrowed and branch entries
     each alone, private parts against the label in their entry, acknowledgements against
-    central's key. Presses (``act``) are no evidence and are passed over. Stops at the first
-    fault. Memory does not grow with the record.
+    central's key, and every blob that lies in the folder against its name. A blob that an entry
+    names and that is not here is no fault: it may wait on the device that took it, or may never
+    have been fetched; what was taken away is told by the entry that still names it. Presses
+    (``act``) are no evidence and are passed over. Stops at the first fault. Memory does not grow
+    with the record.
     """
     check = _Check(realm, progress)
     try:
         with _opened(folder, database) as db:
             check.run(db, folder)
     except _BrokenError as broken:
-        return Report(check.entries, check.logs, broken.fault)
+        return Report(check.entries, check.logs, broken.fault, check.blobs)
     except sqlite3.Error as fault:
         says = f"The database {database} cannot be read ({fault}). Restore it from a backup."
-        return Report(check.entries, check.logs, Fault("", 0, says))
-    return Report(check.entries, check.logs, None)
+        return Report(check.entries, check.logs, Fault("", 0, says), check.blobs)
+    return Report(check.entries, check.logs, None, check.blobs)
 
 
 @contextmanager
@@ -101,6 +107,7 @@ class _Check:
     progress: Progress | None
     entries: int = 0
     logs: int = 0
+    blobs: int = 0
     of: int = 0
     keys: dict[str, bytes] = field(default_factory=dict)
     enrolled: dict[str, set[str]] = field(default_factory=dict)
@@ -122,6 +129,22 @@ class _Check:
             self._check_single(db, seen, "branch")
             self._check_acknowledgements(db, central)
             self._check_private(db, seen)
+        self._check_blobs(Shelf(folder / BLOBS))
+
+    def _check_blobs(self, shelf: Shelf) -> None:
+        for name in shelf.names():
+            try:
+                sound = shelf.sound(name)
+            except OSError as fault:
+                says = f"The file blobs/{name[:2]}/{name[2:]} cannot be read ({fault.strerror})."
+                raise _BrokenError("", 0, says) from fault
+            if not sound:
+                says = (
+                    f"The file blobs/{name[:2]}/{name[2:]} is not what it was when it was kept. "
+                    "Fetch it again from a node that holds it."
+                )
+                raise _BrokenError("", 0, says)
+            self.blobs += 1
 
     def _check_file(self, db: sqlite3.Connection) -> None:
         answer = db.execute("PRAGMA integrity_check(1)").fetchone()[0]
