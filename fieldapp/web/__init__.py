@@ -17,14 +17,17 @@ from fieldapp.web import (
     coolers,
     crate,
     desk,
+    entry_words,
     errors,
     kitchen,
+    links,
     people,
     photos,
     replication,
     scan,
     shown,
     state,
+    story,
     work,
 )
 from fieldapp.web.context import give_back, new_act, pages, person, reading
@@ -69,6 +72,7 @@ def create_app(store: Store, *, token: str = "") -> Flask:
         bench,
         desk,
         coolers,
+        story,
         replication,
         work,
         state,
@@ -114,6 +118,8 @@ def _speak(app: Flask) -> None:
     for name in ("clock", "hours", "face", "code", "ml", "day", "full_day"):
         app.jinja_env.filters[name] = getattr(shown, name)
     app.jinja_env.filters["word"] = words.word
+    app.jinja_env.filters["entry"] = entry_words.says
+    app.jinja_env.filters["linked"] = links.linked
     app.jinja_env.globals.update(new_act=new_act, form_token=form_token, static_url=static_url)
     app.context_processor(_common)
 

@@ -1,6 +1,5 @@
 """What Bench and Desk say of entries, findings, deviations and the figure, in short words."""
 
-import json
 from collections.abc import Mapping
 from datetime import datetime
 from decimal import Decimal
@@ -11,7 +10,7 @@ from fieldapp.domain.codes import grouped
 from fieldapp.domain.facts import Done
 from fieldapp.domain.recorded import Recorded
 from fieldapp.projections.pages import Row
-from fieldapp.web import custody_words, shown
+from fieldapp.web import shown
 from fieldapp.words import N_
 
 OUTCOMES = {
@@ -114,32 +113,6 @@ VERDICTS = {
     "": "",
 }
 
-ENTRIES = {
-    "bottle.issued": N_("Code issued"),
-    "labels.printed": N_("Label printed, copy {copy}"),
-    "bottle.voided": N_("Voided: {why}"),
-    "bottle.set": N_("Scanned and stood in order at visit {visit}, draw {draw}"),
-    "bottle.filled": N_("Filled at visit {visit}, draw {draw}: {fill}"),
-    "bottle.received": N_("Received: {outcome}{number}"),
-    "analysis.decided": N_("Decided: {decision}"),
-    "result.reported": N_("Result: {analyte} {level}"),
-    "finding.settled": N_("Finding settled"),
-    "visit.closed": N_("Visit closed: {outcome}"),
-    "visit.opened": N_("Visit opened"),
-    "deviation.stated": N_("Deviation stated: {deviation}"),
-    "water.used": N_("Last use of water: {exact}, {where}"),
-    "entry.withdrawn": N_("Taken back"),
-    "crate.counted": N_("Counted into the crate: {count}"),
-    "bottle.located": N_("Said to be: {whereabouts}"),
-    "bottle.packed": N_("Packed into cooler {box}"),
-    "cooler.sealed": N_("Cooler {box} sealed with {seals}, {count} in it"),
-    "cooler.reopened": N_("Opened on the way, seals broken: {broken}"),
-    "handover.offered": N_("Handed over to {custodian}, {count} in it, seals {seals}"),
-    "handover.stated": N_("Taken by somebody without a device{waybill_said}"),
-    "cooler.opened": N_("Opened at the laboratory: seals read {seal_read}, {count} counted"),
-    "receipt.stated": N_("Received by the laboratory on {on}, as stated from paper"),
-}
-
 WITHHELD = {
     "low": N_("{n} that bends low"),
     "high": N_("{n} that bends high"),
@@ -193,43 +166,6 @@ def _value(name: str, given: Any, zone: str, now: datetime) -> str:
     if isinstance(given, list):
         return ", ".join(str(one) for one in given if one) or words.gettext("none")
     return words.word(str(given))
-
-
-def entry(recorded: Recorded) -> str:
-    """Return in a few words what an entry says; the kind itself where it has none."""
-    given = recorded.fact
-    data = json.loads(json.dumps(given.data()))
-    values = {"number": "", **data}
-    if number := data.get("laboratory_number"):
-        values["number"] = ", " + words.gettext("laboratory's number {n}").format(n=number)
-    for name, table in (("fill", FILLS), ("why", VOIDED), ("outcome", OUTCOMES)):
-        if values.get(name) in table:
-            values[name] = of(table, str(values[name]))
-    if given.kind == "result.reported":
-        values["level"] = level(data)
-    if given.kind == "analysis.decided":
-        analyse, leave = words.gettext("analyse"), words.gettext("do not analyse")
-        values["decision"] = analyse if values.get("analyse") else leave
-    if "analyte" in values:
-        values["analyte"] = words.word(str(values["analyte"]))
-    values |= _of_custody(data)
-    return words.say(ENTRIES, given.kind, values) if given.kind in ENTRIES else given.kind
-
-
-def _of_custody(data: Mapping[str, Any]) -> dict[str, str]:
-    """Return the words in which an entry names seals, boxes and custodians."""
-    said = {
-        name: ", ".join(map(str, data.get(name) or ())) or words.gettext("none")
-        for name in ("seals", "broken", "seal_read")
-    }
-    said["whereabouts"] = of(custody_words.WHEREABOUTS, str(data.get("how", "")))
-    said["custodian"] = of(custody_words.TO, str(data.get("to", "laboratory")))
-    said["box"] = str(data.get("box") or data.get("cooler", ""))
-    waybill = data.get("waybill", "")
-    said["waybill_said"] = (
-        words.gettext(", waybill {number}").format(number=waybill) if waybill else ""
-    )
-    return said
 
 
 def withheld(counts: Mapping[str, int]) -> str:

@@ -124,6 +124,9 @@ def worked(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Day]:
             rows = pages.bottles(round_id=planned.round.round)
     codes = {(str(row["visit"]), int(row["draw"])): str(row["bottle"]) for row in rows}
     found = {"finding": finding, "bottle": codes["V-0401", 1], "cooler": COOLER}
+    with Store.open(folder / "tablet") as store, store.pages() as pages:
+        signed = [e for e in pages.recorded("V-0401") if e.fact.kind == "visit.signed"]
+        found["entry"] = signed[0].hash
     for name in ("central", "tablet"):
         with Store.open(folder / name) as store:
             facts = _cooler_of(found["bottle"], planned.routes[0].route)

@@ -43,6 +43,9 @@ ROWS = {
     "desk.one_bottle": ("central", "/desk/bottles/{bottle}"),
     "coolers.of_round": ("central", "/desk/rounds/quillhaven-2027-05/coolers"),
     "coolers.one_cooler": ("central", "/desk/coolers/{cooler}"),
+    "story.bottle": ("tablet", "/story/{bottle}"),
+    "story.visit": ("tablet", "/story/visits/V-0404"),
+    "story.entry": ("tablet", "/story/entries/{entry}"),
     "desk.one_finding": ("central", "/desk/findings/{finding}"),
 }
 

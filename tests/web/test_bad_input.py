@@ -255,6 +255,15 @@ BAD: dict[str, list[Row]] = {
         ({"picture": brought(jpeg(qr("SHELF 7")))}, 422, "is of no bottle"),
         ({"picture": brought(jpeg(qr("2HB4X90TC7T"))), "token": None}, 400, "Open it again"),
     ],
+    "story.correct": [
+        ({"reason": ""}, 422, "why it is corrected"),
+        ({"reason": TOO_LONG}, 422, "at most 500"),
+        ({"reason": "r"}, 422, "Nothing here differs"),
+        ({"reason": "r", **NO_TIME[0]}, *NO_TIME[1:]),
+        ({"reason": "r", **AHEAD[0]}, *AHEAD[1:]),
+        ({"reason": "r", "fold": "2"}, 422, "first or the second"),
+        ({"reason": "r", "done_local": "2027-05-04T05:00", **OLD_PAGE[0]}, *OLD_PAGE[1:]),
+    ],
     "state.send": [({"token": None}, 400, "Open it again")],
 }  # fmt: skip
 """What is sent, the code of the answer, and a word of its sentence (``|`` parts what will do)."""

@@ -92,7 +92,7 @@ def test_the_figure_says_value_unit_count_rank_rule_and_convention(desk):
 
 def test_what_did_not_enter_stands_with_its_reason_and_a_link(busy, desk):
     page = desk.read(ROUND)
-    assert f'href="/desk/bottles/{busy.codes["Q-0403"]}"' in page
+    assert f'href="/story/{busy.codes["Q-0403"]}"' in page
     assert "its day of collection is not known yet" in page
 
 

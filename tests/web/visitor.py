@@ -48,7 +48,7 @@ class Visitor:
 
     def _find(self) -> str:
         """Open a visit and receive a bottle that nobody issued; return the finding."""
-        press(self.store, facts.VisitOpened(visit=VISIT))
+        self.opened = press(self.store, facts.VisitOpened(visit=VISIT)).entries[0]
         press(self.store, facts.BottleReceived(bottle=STRANGER, outcome="held", reason="no record"))
         with self.store.pages() as pages:
             (found,) = pages.findings(nodes.MORNING)
@@ -74,6 +74,7 @@ class Visitor:
         known = {
             "visit": VISIT, "route": nodes.ROUTE, "round_id": nodes.ROUND, "bottle": self.codes[0],
             "finding_id": self.finding, "sha256": self.photo, "cooler": COOLER,
+            "entry": self.opened,
             "name": self.static, "_what": "session",
         }  # fmt: skip
         if rule.endpoint == "work.hand_in":
