@@ -28,6 +28,12 @@ def jpeg(image: Image.Image, **given: object) -> bytes:
     return out.getvalue()
 
 
+def noisy(side: int, seed: int = 1) -> bytes:
+    """Return a square JPEG that packs badly, as a photo of a cluttered sink does."""
+    grain = random.Random(seed).randbytes(side * side)
+    return jpeg(Image.frombytes("L", (side, side), grain))
+
+
 def encoded(image: Image.Image, form: str) -> bytes:
     """Return a picture's bytes in that form."""
     out = io.BytesIO()
