@@ -65,8 +65,8 @@ def count_door(
     """Count the full bottles of a visit into the crate at the door."""
     check_past(when, reading)
     planned(pages, visit)
-    full = [str(b["bottle"]) for b in pages.bottles(visit=visit) if b["filled"] and not b["cooler"]]
-    return [CrateCounted(visit=visit, count=count, bottles=tuple(sorted(full)), **when.fields())]
+    full = tuple(sorted(crates.carried(pages, visit)))
+    return [CrateCounted(visit=visit, count=count, bottles=full, **when.fields())]
 
 
 def locate(

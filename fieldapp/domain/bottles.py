@@ -101,16 +101,19 @@ class BottleStanding:
 
     @property
     def cooler(self) -> str:
-        """The cooler it was last packed into, empty for none."""
-        return _named(self.packings[-1].fact, "cooler") if self.packings else ""
+        """The cooler it was last packed into, empty for none or once it is said to be elsewhere."""
+        return _named(self._carried, "cooler") if self._carried else ""
 
     @property
     def whereabouts(self) -> str:
         """Where somebody says that it is, if nobody packed it since; a kind, else empty."""
-        if not self.located:
-            return ""
-        last = in_order((*self.packings, *self.located))[-1]
-        return _named(last.fact, "how")
+        return _named(self._carried, "how") if self._carried else ""
+
+    @property
+    def _carried(self) -> Fact | None:
+        """The last packing or word of where it is."""
+        moves = in_order((*self.packings, *self.located))
+        return moves[-1].fact if moves else None
 
     @property
     def arrived(self) -> bool:

@@ -14,6 +14,7 @@ from fieldapp.domain.bottles import in_order
 from fieldapp.domain.codes import ALPHABET
 from fieldapp.domain.facts import (
     BottleFilled,
+    BottleLocated,
     BottlePacked,
     BottleReceived,
     CoolerOpened,
@@ -42,9 +43,10 @@ class CoolerStanding:
     """What is known of one cooler. Tuples keep every fact, oldest first.
 
     ``packed`` holds the latest packing of each bottle that is in it; a bottle put into another
-    cooler since is not. ``receipts`` are those in this cooler, or in none of a bottle that is in
-    it. ``elsewhere`` names its bottles that arrived in another cooler, ``strayed`` those of
-    another that arrived in this one, ``filled`` its bottles that hold water by the record.
+    cooler since, or said to be elsewhere, is not. ``receipts`` are those in this cooler, or in
+    none of a bottle that is in it. ``elsewhere`` names its bottles that arrived in another cooler,
+    ``strayed`` those of another that arrived in this one, ``filled`` its bottles that hold water
+    by the record.
     """
 
     cooler: str
@@ -170,7 +172,10 @@ class Gap:
 def tell(cooler: str, recorded: Iterable[Recorded]) -> CoolerStanding:
     """Return the standing of that cooler from the living facts about it and about its bottles."""
     ordered = in_order({one.hash: one for one in recorded}.values())
-    packed = {_code(one): one for one in ordered if isinstance(one.fact, BottlePacked)}
+    moved = {
+        _code(one): one for one in ordered if isinstance(one.fact, BottlePacked | BottleLocated)
+    }
+    packed = {code: one for code, one in moved.items() if isinstance(one.fact, BottlePacked)}
     inside = {code: one for code, one in packed.items() if _named(one, "cooler") == cooler}
     mine = [one for one in ordered if _named(one, "cooler") == cooler]
     received = _of(ordered, BottleReceived)

@@ -2,6 +2,7 @@
 
 from fieldapp.domain.bottles import in_order
 from fieldapp.domain.custody import plain_seal
+from fieldapp.domain.facts import CrateCounted
 from fieldapp.domain.recorded import Recorded
 from fieldapp.projections.facts import LIVING, about
 from fieldapp.projections.pages import Pages, Row
@@ -93,14 +94,23 @@ def doors(pages: Pages, route: str) -> list[Row]:
     return [row for row in found if row["full"]]
 
 
+def carried(pages: Pages, visit: str) -> list[str]:
+    """Return the full bottles of a visit that should be in the crate."""
+    return [
+        str(one["bottle"])
+        for one in pages.bottles(visit=visit)
+        if one["filled"] and not (one["cooler"] or one["located"] or one["received_at"])
+    ]
+
+
 def _uncounted(pages: Pages, visit: str) -> list[str]:
-    counted = {
-        code
-        for one in about(pages.db, f"visit:{visit}", ("crate.counted",))
-        for code in getattr(one.fact, "bottles", ())
-    }
-    full = [str(b["bottle"]) for b in pages.bottles(visit=visit) if b["filled"] and not b["cooler"]]
-    return [] if set(full) <= counted else full
+    """Return what should be in the crate, nothing where the last count found it all there."""
+    full = carried(pages, visit)
+    counts = in_order(about(pages.db, f"visit:{visit}", ("crate.counted",)))
+    last = counts[-1].fact if counts else None
+    if isinstance(last, CrateCounted) and last.count >= len(last.bottles):
+        return [] if set(full) <= set(last.bottles) else full
+    return full
 
 
 def latest_press(pages: Pages, route: str) -> Recorded | None:

@@ -15,7 +15,9 @@ from fieldapp.projections.facts import about
 from fieldapp.projections.findings import write_findings
 from fieldapp.projections.tables import put
 
-_OF_BOTTLES = ("bottle.packed", "bottle.filled", "bottle.received", "receipt.stated")
+_OF_BOTTLES = (
+    "bottle.packed", "bottle.located", "bottle.filled", "bottle.received", "receipt.stated",
+)  # fmt: skip
 
 
 def tell_cooler(db: sqlite3.Connection, cooler: str) -> set[str]:

@@ -3,7 +3,7 @@
 from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
-from flask import Blueprint, g, render_template, request, url_for
+from flask import Blueprint, flash, g, render_template, request, url_for
 from werkzeug.wrappers import Response
 
 from fieldapp.commands import crate, custody
@@ -18,6 +18,8 @@ from fieldapp.web import crate_forms as forms
 from fieldapp.web import custody_words, said, spoken
 from fieldapp.web.context import NoPerson, give_back, load, pages, perform, person
 from fieldapp.web.kitchen_forms import when_of
+from fieldapp.web.kitchen_pages import short_count
+from fieldapp.web.scan import photographed
 
 bp = Blueprint("crate", __name__, url_prefix="/kitchen")
 
@@ -46,7 +48,15 @@ def cooler(cooler: str) -> Answer:
     return _cooler(cooler)
 
 
+def _unread(*, fault: RuleBroken, route: str) -> Answer:
+    """Answer the picture of a code in which none was read."""
+    sent = {k: v for k, v in request.form.items() if k not in ("act", "token")}
+    _zone(route)
+    return _counted(route, says=spoken.broken(fault), sent=sent), UNPROCESSABLE
+
+
 @bp.post("/routes/<route>/pack")
+@photographed("code", _unread)
 def pack(route: str) -> Answer:
     """Put one scanned bottle, or all in the crate, into a cooler."""
     form = load(forms.PackForm)
@@ -83,10 +93,13 @@ def count_door(visit: str) -> Answer:
     row = pages().visit(visit)
     if row is None:
         raise Unknown(what="visit", name=visit)
-    return perform(
+    answer = perform(
         lambda p, r: crate.count_door(p, r, visit, count=form["count"]),
         then=url_for("kitchen.route", route=row["route"]),
     )
+    if says := short_count(visit, form["count"]):
+        flash(says)
+    return answer
 
 
 @bp.post("/coolers/<cooler>/seal")
@@ -205,6 +218,7 @@ def _cooler(cooler: str, **more: Any) -> str:
         "cooler": row, "zone": zone, "spoken": spoken, "said": said, "words": custody_words,
         "bottles": [b for code in row["bottles"] if (b := pages().bottle(code))],
         "to": custody.TO, "seals": forms.SEALS, "undo": _undo(row["route"], zone),
+        "whereabouts": crate.WHEREABOUTS,
         "says": "", "sent": {}, "done": "", "done_at": "",
     }  # fmt: skip
     return render_template("kitchen/cooler.html", **{**given, **more})

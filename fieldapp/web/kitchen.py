@@ -4,7 +4,7 @@ from collections.abc import Mapping, Sequence
 from datetime import datetime
 from typing import Any
 
-from flask import Blueprint, g, redirect, render_template, request, url_for
+from flask import Blueprint, flash, g, redirect, render_template, request, url_for
 from marshmallow import EXCLUDE, ValidationError
 from werkzeug.wrappers import Response
 
@@ -276,7 +276,10 @@ def sign(visit: str) -> Answer:
             return signed
         return [*signed, *crate.count_door(p, r, visit, count=counted)]
 
-    return press(visit, decide)
+    answer = press(visit, decide)
+    if counted is not None and isinstance(answer, Response):
+        _say(shown_as.short_count(visit, counted))
+    return answer
 
 
 @bp.post("/visits/<visit>/close")
@@ -291,6 +294,12 @@ def take_back(visit: str) -> Answer:
     form = load(forms.TakeBackForm)
     by = person()
     return press(visit, lambda p, r: kitchen.take_back(p, r, visit, of=form["of"], by=by))
+
+
+def _say(says: str) -> None:
+    """Say something above the next page; nothing for nothing."""
+    if says:
+        flash(says)
 
 
 def _page(name: str, found: Mapping[str, Any], **more: Any) -> str:

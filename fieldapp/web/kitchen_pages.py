@@ -8,12 +8,14 @@ from zoneinfo import ZoneInfo
 
 from flask import g, render_template, request, url_for
 
+from fieldapp import words
 from fieldapp.commands import drawing, kitchen, last_use
 from fieldapp.commands.asked import latest, planned, standing_of
 from fieldapp.commands.crate import OPEN
 from fieldapp.domain.bottles import in_order
-from fieldapp.domain.deviations import stated_kinds
+from fieldapp.domain.deviations import bias_of, stated_kinds
 from fieldapp.domain.facts import (
+    DeviationStated,
     RunEnded,
     RunStarted,
     TapOpened,
@@ -27,7 +29,7 @@ from fieldapp.domain.recorded import Recorded
 from fieldapp.domain.timetext import chips
 from fieldapp.projections import crates
 from fieldapp.projections.pages import Row
-from fieldapp.web import pictures, said, spoken
+from fieldapp.web import pictures, said, shown, spoken
 from fieldapp.web.context import pages, person, reading
 from fieldapp.web.rail import rail
 
@@ -111,7 +113,19 @@ def _taken(told: Standing, recorded: Sequence[Recorded]) -> dict[str, Any]:
         "fill_word": partial(said.of, said.FILLS),
         "draw_kind": partial(said.of, said.KINDS),
         "deviation_says": spoken.deviation,
+        "reasons": _reasons(told, recorded),
     }
+
+
+def _reasons(told: Standing, recorded: Sequence[Recorded]) -> dict[str, list[str]]:
+    """Return what people said of each kind of deviation; of a closed visit nothing (R6)."""
+    found: dict[str, list[str]] = {}
+    for entry in recorded if told.state != "closed" else ():
+        if isinstance(entry.fact, DeviationStated):
+            whole = pages().fact(entry.hash, private=True)
+            reason = str(getattr(whole.fact, "reason", "")) if whole else ""
+            found.setdefault(entry.fact.deviation, []).extend([reason] if reason else [])
+    return found
 
 
 def begun(recorded: Sequence[Recorded]) -> datetime | None:
@@ -176,6 +190,17 @@ def crate_of(route: str) -> dict[str, Any]:
     }
 
 
+def short_count(visit: str, counted: int) -> str:
+    """Return what to say where fewer bottles were counted into the crate than were filled."""
+    full = crates.carried(pages(), visit)
+    if counted >= len(full):
+        return ""
+    says = words.gettext(
+        "Counted into the crate: {counted} of {n}. Look for {codes} before you drive on."
+    )
+    return says.format(counted=counted, n=len(full), codes=", ".join(map(shown.code, full)))
+
+
 def next_of(stops: Sequence[Mapping[str, Any]]) -> Mapping[str, Any] | None:
     """Return the stop to go to: one begun, one that rings, one to do, then one that waits."""
     for state in ("open", "ready", "planned", "left"):
@@ -199,6 +224,7 @@ def different_choices(found: Mapping[str, Any]) -> dict[str, Any]:
     return {
         "whys": kitchen.LEAVE_WHYS,
         "kinds": stated_kinds(),
+        "bias_of": bias_of,
         "outcomes": kitchen.OUTCOMES[1:],
         "void_whys": drawing.VOID_WHYS,
         "empty": [one for one in told.draws if one.state in ("waiting", "set")],

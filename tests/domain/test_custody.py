@@ -16,7 +16,7 @@ from fieldapp.domain.custody import (
     set_hash,
     tell,
 )
-from fieldapp.domain.facts import HandoverStated, ReceiptStated
+from fieldapp.domain.facts import BottleLocated, HandoverStated, ReceiptStated
 from fieldapp.domain.reconcile_coolers import about_cooler
 from tests.custody import COOLER, FOUR, MORNING, ONE, OTHER, THREE, TWO, Record, ordinary
 
@@ -318,3 +318,11 @@ def test_fewer_scans_than_counted_leave_the_missing_ones_to_tell_it(record):
     record.receive(ONE)
     assert kinds(record) == []
     assert record.told().missing == (TWO,)
+
+
+def test_a_bottle_that_is_said_to_be_elsewhere_after_it_was_packed_is_in_no_cooler(record):
+    record.pack(ONE, TWO)
+    record.add(BottleLocated(bottle=TWO, how="elsewhere", route="north"))
+    assert record.told().bottles == (ONE,)
+    record.pack(TWO)
+    assert record.told().bottles == (ONE, TWO)

@@ -272,3 +272,24 @@ def test_a_finding_of_a_cooler_is_said_with_box_and_day_and_leads_to_it(filled, 
     assert said in words(page)
     assert f'href="{on_the_road}"' in page
     assert said in words(clerk.read(on_the_road))
+
+
+def test_a_short_count_says_which_bottles_to_look_for_and_asks_again(filled, sampler):
+    page = words(sampler.land(BOARD, "/kitchen/visits/Q-0401/crate", count="0"))
+    assert "Counted into the crate: 0 of 1." in page
+    assert f"Look for {grouped(filled.codes['Q-0401'])} before you drive on." in page
+    assert "Q-0401: 1 bottle in the crate?" in page
+    sampler.land(COUNT, LOCATE, bottle=filled.codes["Q-0401"], how="left-behind")
+    assert "Q-0401: 1 bottle in the crate?" not in words(sampler.read(BOARD))
+
+
+def test_a_bottle_that_is_not_in_the_open_cooler_is_taken_out_by_saying_where_it_is(
+    filled, sampler
+):
+    seal_all(filled, sampler)
+    cooler = the_cooler(filled)
+    sampler.land(cooler, cooler + "/reopen", reason="one rolled under the seat")
+    sampler.land(cooler, LOCATE, bottle=filled.codes["Q-0403"], how="elsewhere", where="the seat")
+    page = words(sampler.read(COUNT))
+    assert "Seal 2 bottles in" in page
+    assert filled.bottle("Q-0403")["cooler"] == ""
