@@ -15,6 +15,9 @@ NOTHING = timedelta(0)
 # Within this the wall clock and the counter tell one story; beyond it the clock was set or the
 # counter slept. Our choice: drift over 16 h is under 6 s, the steps seen are minutes and hours.
 ACCEPTED_GAP = timedelta(seconds=60)
+# Wall and counter are read one after the other, each to a millisecond. By how much they are apart
+# is taken to the second, or a deadline would tremble from one look to the next. Our choice.
+APART = timedelta(seconds=1)
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,7 +56,7 @@ def between(start: Mark, end: Mark, *, offset_bound: timedelta = NOTHING) -> Sta
     """
     wall = in_utc(end.at) - in_utc(start.at)
     walls = (wall - offset_bound, wall + offset_bound)
-    mono = _counted(start, end)
+    mono = _counted(start, end, wall)
     if mono is None:
         return _bracketed("clocked", *walls)
     if abs(wall - mono) <= ACCEPTED_GAP:
@@ -103,10 +106,12 @@ def latest_of(starts: Iterable[datetime]) -> datetime | None:
     return max(map(in_utc, starts), default=None)
 
 
-def _counted(start: Mark, end: Mark) -> timedelta | None:
+def _counted(start: Mark, end: Mark, wall: timedelta) -> timedelta | None:
+    """Return what the counter counted, as far from the wall clock as whole seconds say."""
     if start.boot != end.boot or start.mono_ms is None or end.mono_ms is None:
         return None
-    return timedelta(milliseconds=end.mono_ms - start.mono_ms)
+    apart = wall - timedelta(milliseconds=end.mono_ms - start.mono_ms)
+    return wall - round(apart / APART) * APART
 
 
 def _bracketed(basis: Basis, shortest: timedelta, longest: timedelta) -> Stand:

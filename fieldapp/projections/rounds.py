@@ -128,10 +128,15 @@ def finding(pages: Pages, finding_id: str) -> Row | None:
 
 
 def findings_about(pages: Pages, subject: str, now: datetime) -> list[Row]:
-    """Return the findings of one subject that are open now or settled."""
+    """Return the findings of one subject that are open now or settled.
+
+    A finding of two swapped bottles stands with one of them and is about both.
+    """
+    what, _, name = subject.partition(":")
     return pages.rows(
-        "SELECT * FROM p_finding WHERE subject = ? AND opens_at <= ? ORDER BY settled != '', kind",
-        (subject, text(now)),
+        "SELECT * FROM p_finding WHERE (subject = ? OR (kind = 'bottles-swapped'"
+        " AND json_extract(says, '$.other') = ?)) AND opens_at <= ? ORDER BY settled != '', kind",
+        (subject, name if what == "bottle" else "", text(now)),
     )
 
 

@@ -23,6 +23,8 @@ Answer = Response | str | tuple[str, int]
 Decide = Callable[[Pages, Reading], Sequence[Fact]]
 Timed = Callable[[Pages, Reading, When], Sequence[Fact]]
 UNPROCESSABLE = 422
+BARS = (drawing.WrongBottle, drawing.AlreadyFilled, drawing.BottleVoid)
+"""A bottle that stands against a rule; beside it stand the three ways (R1)."""
 LEFT_TO_ERRORS = (StepOver, Unknown, NoPerson, ActDiffers)
 """What ``web/errors.py`` answers for every place alike."""
 
@@ -65,7 +67,7 @@ def refused(visit: str, fault: RuleBroken) -> Answer:
     give_back()
     g.pop("reading", None)
     says, sent = spoken.broken(fault), request.form.to_dict()
-    if isinstance(fault, drawing.WrongBottle | drawing.AlreadyFilled):
+    if isinstance(fault, BARS):
         return wrong_bottle(visit, says, fault.values), UNPROCESSABLE
     if request.path.endswith(("/done", "/ran")):
         return done(visit, sent, says), UNPROCESSABLE

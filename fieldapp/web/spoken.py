@@ -130,6 +130,9 @@ DEVIATIONS = {
     "other": N_("Something else"),
 }
 
+BIASES = {"low": N_("reads low"), "high": N_("reads high"), "either": N_("either way")}
+"""The direction in which a deviation bends the result, beside its chip."""
+
 PRESSES = {
     "visit.opened": N_("Visit begun"),
     "visit.left": N_("Left"),
@@ -270,6 +273,8 @@ def _shown(values: Mapping[str, Any]) -> dict[str, Any]:
 
 def press(entry: Recorded, zone: str) -> str:
     """Return what the undo bar says of the last press, with its second."""
+    if entry.replaces:
+        return f"{words.gettext('Corrected')} {entry.at.astimezone(ZoneInfo(zone)):%H:%M:%S}"
     here = entry.done_at.astimezone(ZoneInfo(zone))
     return f"{of(PRESSES, entry.fact.kind)} {here:%H:%M:%S}"
 

@@ -206,3 +206,21 @@ def test_above_an_hour_it_is_asked_whether_to_draw(minutes, due):
     if due == "ask":
         assert (kitchen.due.question, kitchen.due.answers[0]) == ("stand-long", "draw-now")
         assert kitchen.due.source
+
+
+@pytest.mark.parametrize("milliseconds", [-3, -1, 1, 3, 400])
+def test_a_counter_read_a_moment_after_the_clock_does_not_move_the_end_of_a_wait(milliseconds):
+    kitchen = standing(minutes=10)
+    until = kitchen.due.until
+    kitchen.mono += milliseconds
+
+    assert kitchen.due.until == until
+    assert kitchen.where().stand.basis == "measured"
+
+
+def test_a_clock_that_runs_behind_by_seconds_is_not_believed_against_the_counter():
+    kitchen = standing(minutes=10)
+    until = kitchen.due.until
+    kitchen.mono += 7_000
+
+    assert kitchen.due.until == until - timedelta(seconds=7)

@@ -7,7 +7,8 @@ from pathlib import Path
 
 import pytest
 
-from fieldapp.commands import kitchen, running
+from fieldapp.commands import kitchen, last_use, running
+from fieldapp.domain.facts import BottleVoided
 from tests.tap import HERE, OTHER, SAMPLER, VISIT, Tap
 from tests.web.reader import Reader, words
 
@@ -150,3 +151,71 @@ def test_while_the_water_has_yet_to_run_the_board_knows_no_earliest_draw(tap: Ta
     with tap.pages() as pages:
         assert pages.visit(HERE)["earliest_draw"] == ""
     assert "Next to ring" not in words(sampler.read("/kitchen/"))
+
+
+# the three ways beside a bar (R1), and what was different
+
+
+def ways(page: str, visit: str) -> list[str]:
+    """Return which of leave and already done a page offers."""
+    return [way for way in ("/leave", "/done") if path(way, visit) in page]
+
+
+def test_a_doubt_offers_to_wait_to_leave_and_that_it_is_done(tap: Tap, sampler: Reader):
+    tap.press(kitchen.open_visit, VISIT)
+    tap.press(kitchen.agree, VISIT, how="spoken")
+    used = tap.clock.at - timedelta(hours=6.1)
+    tap.press(last_use.state_last_use, VISIT, exact="about", at=used, where="bath")
+    while (due := tap.standing(VISIT).due).question != "stand-doubt":
+        tap.press(kitchen.answer, VISIT, question=due.question, answer=due.answers[0])
+    page = sampler.read(path(visit=VISIT))
+
+    assert "Wait until it is sure" in words(page)
+    assert ways(page, VISIT) == ["/leave", "/done"]
+
+
+def test_a_bottle_out_of_use_offers_another_to_leave_and_that_it_is_done(tap: Tap, sampler: Reader):
+    tap.begin(VISIT)
+    tap.record(BottleVoided(bottle=tap.codes[VISIT], why="broken"))
+    answer = sampler.send(path(visit=VISIT), path("/set", VISIT), code=tap.codes[VISIT])
+    page = answer.get_data(as_text=True)
+
+    assert answer.status_code == 422
+    assert "Take another bottle" in words(page)
+    assert ways(page, VISIT) == ["/leave", "/done"]
+
+
+def test_a_run_too_short_and_a_wait_offer_their_ways(tap: Tap, sampler: Reader):
+    tap.until(HERE, "run")
+    assert ways(sampler.land(path(), path("/run")), HERE) == ["/leave", "/done"]
+    tap.clock.pass_by(minutes=5)
+    assert ways(sampler.land(path(), path("/run")), HERE) == ["/leave", "/done"]
+
+
+def test_an_answer_that_ended_the_visit_may_come_after_the_draw(tap: Tap, sampler: Reader):
+    tap.press(kitchen.open_visit, VISIT)
+    tap.press(kitchen.agree, VISIT, how="refused")
+    assert "/done" in ways(sampler.read(path(visit=VISIT)), VISIT)
+
+
+def test_what_is_different_is_offered_with_its_direction_and_shown_with_its_reason(
+    tap: Tap, sampler: Reader
+):
+    tap.begin(VISIT)
+    here = path("/different", VISIT)
+    assert "Only a thin stream · reads low" in words(sampler.read(here))
+    sampler.land(here, here, deviation="low-flow", reason="the valve sticks")
+
+    said = words(sampler.read(here))
+    assert "slower than a glass is filled (bends the result low)" in said
+    assert "the valve sticks" in said
+
+
+def test_of_a_closed_visit_no_words_are_shown(tap: Tap, sampler: Reader):
+    tap.begin(VISIT)
+    tap.press(kitchen.state_deviation, VISIT, kind="low-flow", reason="the valve sticks")
+    tap.finish(VISIT)
+
+    page = sampler.read(path(visit=VISIT))
+    assert "slower than a glass is filled" in words(page)
+    assert "the valve sticks" not in page
