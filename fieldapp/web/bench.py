@@ -18,6 +18,7 @@ from fieldapp.projections import arrivals, rounds
 from fieldapp.projections.pages import Pages
 from fieldapp.web import cooler_words, counter, state
 from fieldapp.web.context import load, pages, perform, person
+from fieldapp.web.scan import photographed
 
 bp = Blueprint("bench", __name__, url_prefix="/bench")
 
@@ -78,7 +79,18 @@ def index() -> Response | str:
     return counter.show(answer, cooler=cooler, cards=cards)
 
 
+def _unread(*, fault: RuleBroken) -> Shown:
+    """Answer the picture of a code in which none was read; what was typed beside it stays."""
+    says = words.broken(fault.kind, fault.values)
+    typed = request.form.to_dict()
+    form = {**typed, "cooler": typed.get("cooler", ""), "cards": typed.get("cards", "")}
+    return _shown({"word": "stop", "why": fault.kind, "says": says}, form, keep=typed), (
+        UNPROCESSABLE
+    )
+
+
 @bp.post("/receive")
+@photographed("bottle", _unread, want="any")
 def receive() -> Shown:
     """Receive one bottle by its code, or take a card for the next one."""
     form = load(ReceiveForm)

@@ -39,7 +39,8 @@ class Camera {
     if (!this.file.files.length) return
     this.says.textContent = this.place.dataset.looking
     const answer = await this.ask(this.file.files[0])
-    if (answer.code) this.file.value = ""
+    // emptied, so that the next picture is noticed though its file has the same name
+    if (answer.code || answer.kind) this.file.value = ""
     this.hear(answer)
   }
 

@@ -22,6 +22,8 @@ NOT_PAGES = {
     "bench.cards": "a page to print, as PDF",
     "coolers.record": "a page to print, as PDF",
     "coolers.sheet": "the signed sheet as it was kept",
+    "photos.picture": "a photo",
+    "photos.small": "a photo at the size of a list",
     "desk.find": "redirects to a bottle or a site",
 }
 ROWS = {
@@ -33,6 +35,7 @@ ROWS = {
     "kitchen.different": ("tablet", "/kitchen/visits/V-0401/different"),
     "kitchen.done": ("tablet", "/kitchen/visits/V-0401/done"),
     "kitchen.last_use": ("tablet", "/kitchen/visits/V-0401/last-use"),
+    "photos.of_visit": ("tablet", "/kitchen/visits/V-0401/photos"),
     "crate.count": ("tablet", "/kitchen/routes/R-0504/count"),
     "crate.cooler": ("tablet", "/kitchen/coolers/{cooler}"),
     "bench.index": ("central", "/bench/"),

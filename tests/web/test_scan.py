@@ -6,6 +6,7 @@ from pathlib import Path
 
 import pytest
 
+from fieldapp.commands import drawing
 from tests.pictures import jpeg, marked, photographed
 from tests.tap import OTHER, SAMPLER, VISIT, Tap
 from tests.web.reader import Reader, words
@@ -115,3 +116,38 @@ def test_every_step_that_asks_for_a_code_takes_a_picture_of_it(tap, sampler):
         page = sampler.read(path)
         assert 'name="picture" accept="image/*" capture="environment"' in page
         assert 'enctype="multipart/form-data"' in page
+
+
+def test_the_counter_takes_a_photographed_bottle_without_a_script(tap):
+    clerk = Reader(tap, SAMPLER)
+    tap.press(drawing.set_bottle, VISIT, code=tap.codes[VISIT])
+    tap.press(drawing.fill, VISIT, fills={})
+    answer = clerk.send("/bench/", "/bench/receive", bottle="", picture=brought(tap.codes[VISIT]))
+    assert answer.status_code == 303
+    with tap.pages() as pages:
+        assert pages.bottle(tap.codes[VISIT])["outcome"] == "accepted"
+
+
+def test_a_picture_without_a_code_is_a_stop_at_the_counter_and_the_number_stays(tap):
+    clerk = Reader(tap, SAMPLER)
+    picture = io.BytesIO(jpeg(marked())), "x.jpg"
+    answer = clerk.send(
+        "/bench/", "/bench/receive", bottle="", picture=picture, laboratory_number="W-17"
+    )
+    assert answer.status_code == 422
+    assert "No bottle code can be read in that picture" in words(answer.text)
+    assert "W-17" in answer.text
+
+
+def test_the_crate_takes_a_photographed_bottle_without_a_script(tap, sampler):
+    tap.press(drawing.set_bottle, VISIT, code=tap.codes[VISIT])
+    tap.press(drawing.fill, VISIT, fills={})
+    page, pack = "/kitchen/routes/north/count", "/kitchen/routes/north/pack"
+    nothing = io.BytesIO(jpeg(marked())), "x.jpg"
+    answer = sampler.send(page, pack, box="3", code="", picture=nothing)
+    assert answer.status_code == 422
+    assert "No bottle code can be read in that picture" in words(answer.text)
+    sampler.land(page, pack, box="3", code="", picture=brought(tap.codes[VISIT]))
+    with tap.pages() as pages:
+        story = [entry.fact.kind for entry in pages.story(f"bottle:{tap.codes[VISIT]}")]
+    assert story[-1] == "bottle.packed"
