@@ -9,7 +9,7 @@ from decimal import Decimal
 from pathlib import Path
 from typing import Any
 
-from fieldapp import identity
+from fieldapp import identity, photos
 from fieldapp.projections import answers, rounds
 from fieldapp.projections.pages import Pages
 from fieldapp.store import REALM
@@ -69,7 +69,8 @@ class Account:
             f"{self.visits} visits; bottles: "
             + ", ".join(f"{told[name]} {name.replace('_', ' ')}" for name in COUNTED),
             *figures,
-            f"{self.entries} entries at central, chain {self.chain} at every node.",
+            f"{self.entries} entries and {self.photos} photos at central, "
+            f"chain {self.chain} at every node.",
             *(f"Finding: {one['says']}" for one in self.findings),
             "Every bottle went the whole way and nothing is open." if self.good
             else "Something is open: see above.",
@@ -102,7 +103,7 @@ def account_of(
             ),
             bottles={name: totals[name] for name in COUNTED},
             entries=pages.count("SELECT COUNT(*) FROM entry"),
-            photos=0,
+            photos=_photos(pages, central),
             findings=[
                 {
                     "kind": one["kind"],
@@ -128,6 +129,17 @@ def _reading(folder: Path) -> Iterator[Pages]:
     with contextlib.closing(sqlite3.connect(uri, uri=True)) as db:
         prepare(db, reader=True)
         yield Pages(db)
+
+
+def _photos(pages: Pages, central: Path) -> int:
+    """Return how many photos central holds: noted there, and the picture itself on its disk."""
+    noted = {
+        str(row["photo"])
+        for row in pages.rows(
+            "SELECT json_extract(data, '$.photo') AS photo FROM p_fact WHERE kind = 'photo.taken'"
+        )
+    }
+    return sum(1 for name in noted if photos.find(name, central) is not None)
 
 
 def _plain(level: Decimal) -> str:

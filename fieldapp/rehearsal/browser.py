@@ -3,12 +3,14 @@
 It sees what a person with no scripts sees. A form it must press carries ``data-main``.
 """
 
+import secrets
 from dataclasses import dataclass, field
 from html.parser import HTMLParser
 from http.cookiejar import CookieJar, DefaultCookiePolicy
 from urllib import error, parse, request
 
-VOID = {"input", "img", "br", "hr", "link", "meta", "area", "base", "col", "source", "wbr"}
+URLENCODED = "application/x-www-form-urlencoded"
+FAULTY, BARRED = 400, 422
 
 
 class Trouble(Exception):
@@ -26,6 +28,7 @@ class Form:
     choices: dict[str, list[str]] = field(default_factory=dict)
     buttons: list[dict[str, str]] = field(default_factory=list)
     typed: list[str] = field(default_factory=list)
+    files: list[str] = field(default_factory=list)
 
     def values(self, name: str) -> list[str]:
         """Return the values that name may take, by choice or by button."""
@@ -59,12 +62,20 @@ class Page:
         """Return the link of the way on, which may carry the end of a wait (``data-until``)."""
         return next((link for link in self.links if "data-main" in link), None)
 
-    def form(self, ending: str) -> Form:
-        """Return the form that posts to an address with that ending."""
+    def form(self, ending: str, **holding: str) -> Form:
+        """Return the form that posts to an address with that ending, holding those values."""
         for form in self.forms:
-            if parse.urlsplit(form.action).path.endswith(ending):
+            held = holding.items() <= form.fields.items()
+            if held and parse.urlsplit(form.action).path.endswith(ending):
                 return form
         raise Trouble(f"{self.url} has no form for {ending}: {self.says}")
+
+    def link(self, ending: str) -> str:
+        """Return the address of the link whose path has that ending."""
+        for link in self.links:
+            if parse.urlsplit(link.get("href", "")).path.endswith(ending):
+                return link["href"]
+        raise Trouble(f"{self.url} has no link to {ending}: {self.says}")
 
 
 class Browser:
@@ -80,23 +91,62 @@ class Browser:
 
     def open(self, path: str) -> Page:
         """Open a page by its path or address."""
-        return self._ask(parse.urljoin(self.root + "/", path), None)
+        page = self._ask(parse.urljoin(self.root + "/", path), None)
+        if page.code >= FAULTY:
+            raise Trouble(f"{page.url} answered {page.code}: {page.says}")
+        return page
 
-    def press(self, page: Page, form: Form, given: dict[str, str] | None = None) -> Page:
-        """Fill the form as given, everything else as it stands, and post it."""
+    def press(
+        self,
+        page: Page,
+        form: Form,
+        given: dict[str, str] | None = None,
+        *,
+        files: dict[str, bytes] | None = None,
+        barred: bool = False,
+    ) -> Page:
+        """Fill the form as given, everything else as it stands, and post it.
+
+        ``files`` are pictures by the name of their field. ``barred``: the answer is to be the
+        page that says what stands against it.
+        """
         sent = {**form.fields, **(given or {})}
         self.presses += 1
-        return self._ask(parse.urljoin(page.url, form.action), parse.urlencode(sent).encode())
+        kind, data = URLENCODED, parse.urlencode(sent).encode()
+        if files:
+            kind, data = in_parts(sent, files)
+        answer = self._ask(parse.urljoin(page.url, form.action), data, kind)
+        if barred != (answer.code == BARRED) or (answer.code >= FAULTY and not barred):
+            raise Trouble(f"{answer.url} answered {answer.code}: {answer.says}")
+        return answer
 
-    def _ask(self, url: str, data: bytes | None) -> Page:
+    def _ask(self, url: str, data: bytes | None, kind: str = "") -> Page:
+        """Return the page at an address, whatever its code."""
+        asked = request.Request(url, data=data, headers={"Content-Type": kind} if kind else {})
         try:
-            with self._opener.open(request.Request(url, data=data), timeout=30) as answer:
+            with self._opener.open(asked, timeout=30) as answer:
                 return read_page(answer.geturl(), answer.status, answer.read().decode())
         except error.HTTPError as fault:
-            page = read_page(url, fault.code, fault.read().decode("utf-8", "replace"))
-            raise Trouble(f"{url} answered {fault.code}: {page.says}") from fault
+            return read_page(url, fault.code, fault.read().decode("utf-8", "replace"))
         except OSError as fault:
             raise Trouble(f"{url} does not answer: {fault}") from fault
+
+
+def in_parts(sent: dict[str, str], files: dict[str, bytes]) -> tuple[str, bytes]:
+    """Return fields and pictures as one body of parts, with its media type.
+
+    Source: RFC 7578, multipart/form-data.
+    """
+    mark = secrets.token_hex(16)
+    body = b""
+    for name, value in sent.items():
+        body += f'--{mark}\r\nContent-Disposition: form-data; name="{name}"\r\n\r\n'.encode()
+        body += value.encode() + b"\r\n"
+    for name, data in files.items():
+        told = f'name="{name}"; filename="{name}.jpg"\r\nContent-Type: image/jpeg'
+        body += f"--{mark}\r\nContent-Disposition: form-data; {told}\r\n\r\n".encode()
+        body += data + b"\r\n"
+    return f"multipart/form-data; boundary={mark}", body + f"--{mark}--\r\n".encode()
 
 
 def read_page(url: str, code: int, html: str) -> Page:
@@ -163,6 +213,8 @@ class _Reader(HTMLParser):
                 form.fields[name] = given.get("value", "on")
         elif kind in ("submit", "image"):
             form.buttons.append(given)
+        elif kind == "file":
+            form.files.append(name)
         else:
             form.fields[name] = given.get("value", "")
             if kind != "hidden":

@@ -47,8 +47,21 @@ class LastUse:
 
 
 @dataclass(frozen=True, slots=True)
+class Photo:
+    """A picture that is taken at a visit: of a bottle by its draw, 0 for the visit itself."""
+
+    draw: int = 0
+    says: str = ""
+
+
+@dataclass(frozen=True, slots=True)
 class VisitScript:
-    """What happens at one visit, as far as it is not as expected."""
+    """What happens at one visit, as far as it is not as expected.
+
+    ``waits``: ``here`` or ``away``, or ``not``: the draws are made before their stand is over.
+    ``swapped`` names the visit whose bottles were taken here, as this one's were there.
+    ``left_behind`` names the draws whose full bottles are never packed.
+    """
 
     visit: str
     arrives: str = ""
@@ -56,10 +69,30 @@ class VisitScript:
     last_use: LastUse = LastUse()
     answers: Mapping[str, str] = field(default_factory=dict)
     fill: Mapping[int, str] = field(default_factory=dict)
+    photos: tuple[Photo, ...] = ()
+    swapped: str = ""
+    left_behind: frozenset[int] = frozenset()
 
     def fill_of(self, draw: int) -> str:
         """Return how full the bottle of that draw got."""
         return self.fill.get(draw, "line")
+
+
+@dataclass(frozen=True, slots=True)
+class Load:
+    """One load of a cooler: what goes in, its seals, who takes it, what the Bench reads.
+
+    ``visits`` whose bottles are scanned into it; without any, it takes all that are left.
+    ``taken_by`` is a person of the file; ``bench_reads`` the seals where they are read otherwise.
+    """
+
+    route: str
+    box: str
+    seals: tuple[str, ...]
+    visits: tuple[str, ...] = ()
+    to: str = "laboratory"
+    taken_by: str = ""
+    bench_reads: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -81,6 +114,7 @@ class Script:
     begins: str = BEGINS
     laboratory_number: str = FIRST_NUMBER
     visits: Mapping[str, VisitScript] = field(default_factory=dict)
+    loads: tuple[Load, ...] = ()
     reports: Mapping[str, Report] = field(default_factory=dict)
     results: Mapping[tuple[str, int, str], str] = field(default_factory=dict)
     notes: tuple[Note, ...] = ()

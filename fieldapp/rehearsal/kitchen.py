@@ -1,21 +1,24 @@
 """Walk one visit in the Kitchen: at each page the form of the way on, filled by the script."""
 
-from collections.abc import Mapping
+from collections import deque
+from collections.abc import Collection, Mapping
 from datetime import UTC, datetime
 from urllib.parse import urlsplit
 
 from fieldapp.rehearsal.browser import Browser, Form, Page, Trouble
-from fieldapp.rehearsal.day import VisitScript
+from fieldapp.rehearsal.day import Photo, VisitScript
 from fieldapp.rehearsal.nodes import Time
+from fieldapp.rehearsal.picture import picture_of
 
 MOST_PAGES = 80
 WATER_LOT = "LW-0001"
 
 
 class Visit:
-    """One visit as the script tells it; ``codes`` holds the bottle of each labelled draw.
+    """One visit as the script tells it; ``codes`` holds the bottle taken for each labelled draw.
 
-    ``carried`` names the draws whose bottles leave the house with water in them.
+    ``carried`` names the draws whose bottles leave the house with water in them. ``strange`` are
+    codes that were printed for another visit; they are filled here all the same.
     """
 
     def __init__(
@@ -26,9 +29,11 @@ class Visit:
         script: VisitScript,
         codes: Mapping[int, str],
         signer: str,
+        strange: Collection[str] = (),
     ) -> None:
         self.browser, self.time, self.visit, self.script = browser, time, visit, script
-        self.codes, self.signer = dict(codes), signer
+        self.codes, self.signer, self.strange = dict(codes), signer, frozenset(strange)
+        self._photos = deque(script.photos)
         self._unset, self._drawn = sorted(codes), 1
         self.carried: list[int] = []
         self.arrived = time.now()
@@ -49,6 +54,9 @@ class Visit:
             until = _until(page)
             if until is None:
                 return None  # nothing to press and nothing to wait for: the visit is over
+            if self.script.waits == "not" and self._unset:
+                page = self._as_it_happened(page)
+                continue
             if self.script.waits == "away" and not _stays(page):
                 self.browser.press(page, page.form("/leave"))
                 return until
@@ -58,6 +66,9 @@ class Visit:
 
     def _fill(self, page: Page, form: Form) -> Page:
         ending = urlsplit(form.action).path.rpartition("/")[2]
+        if ending == "sign" and self._photos:
+            self._photograph(self._photos.popleft())
+            return self.browser.open(self.path)
         filled = {
             "answer": self._answer,
             "last-use": self._last_use,
@@ -67,7 +78,35 @@ class Visit:
             "sign": self._sign,
         }
         given = filled[ending](form) if ending in filled else {}
+        if given.get("code") in self.strange:
+            return self._as_it_happened(self.browser.press(page, form, given, barred=True))
         return self.browser.press(page, form, given)
+
+    def _as_it_happened(self, page: Page) -> Page:
+        """Take the way beside a bar: what is due is done already (R1).
+
+        Beside a wait all labelled draws are told, beside a strange bottle the one it was set for.
+        """
+        page = self.browser.open(page.link("/done"))
+        form = page.form("/done")
+        told = [self._drawn] if self.codes.get(self._drawn) in self.strange else self._take_all()
+        given = {name: "" for name in form.fields if name.startswith("was_")}
+        for draw in told:
+            given |= {f"was_{draw}": "yes", f"code_{draw}": self.codes[draw]}
+            given[f"fill_{draw}"] = self.script.fill_of(draw)
+        self.carried += told
+        return self.browser.press(page, form, given)
+
+    def _take_all(self) -> list[int]:
+        taken, self._unset = self._unset, []
+        return taken
+
+    def _photograph(self, photo: Photo) -> None:
+        page = self.browser.open(f"{self.path}/photos")
+        about = f"bottle:{self.codes[photo.draw]}" if photo.draw else f"visit:{self.visit}"
+        picture = picture_of(f"{self.visit} {photo.draw} {photo.says}")
+        given = {"about": about, "caption": photo.says}
+        self.browser.press(page, page.form("/photos"), given, files={"photo": picture})
 
     def _full(self, form: Form) -> dict[str, str]:
         """Say how full each bottle is, as scripted."""

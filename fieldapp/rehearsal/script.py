@@ -8,7 +8,8 @@ The block, all of it optional (times are local to the round, ``HH:MM``)::
       "visits": [{
         "id": "V-0401",
         "arrives": "05:40",               no earlier than this at the door
-        "waits": "away",                  "away": leave and come back, "here": stay (the default)
+        "waits": "away",                  "away": leave and come back, "here": stay (the default),
+                                          "not": draw before the stand is over
         "last_use": {"at": "22:30", "exact": "about", "where": "bath"},
                                           the latest 22:30 before the arrival; or
                     {"hours_before": "7.5", "exact": "at", "where": "this-tap"}
@@ -16,7 +17,18 @@ The block, all of it optional (times are local to the round, ``HH:MM``)::
                     {"exact": "unknown", "where": "this-tap"}
         "answers": {"filter": "bypassed"},
                                           only where not the first, expected answer
-        "fill": {"1": "below"}            by draw, only where not "line"
+        "fill": {"1": "below"},           by draw, only where not "line"
+        "photos": [{"draw": 1, "says": "…"}],
+                                          pictures, before signing; without a draw: of the visit
+        "swapped": "V-0402",              first bottles of both visits filled in each other's place
+        "left_behind": [1]                full bottles that are never packed, by draw
+      }],
+      "coolers": [{                       without any, bottles come to the Bench in no cooler
+        "route": "R-0504", "box": "3", "seals": "88 214, 88 215",
+        "visits": ["V-0401"],             whose bottles go in; without: all that are left
+        "to": "laboratory",               or "courier", "night-box", "colleague"
+        "taken_by": "clerk-1",            a person of this file, named at the handover
+        "bench_reads": "88 241"           where the Bench reads other numbers
       }],
       "reports": [{"analyte": "lead", "unit": "ug/L", "detection": "0.3", "reporting": "1",
                    "method": "EPA 200.8", "analysed_at": "2027-05-07"}],
@@ -29,8 +41,10 @@ is as expected. A draw without a result stays without one.
 
 import re
 from collections.abc import Mapping
+from dataclasses import replace
 from decimal import Decimal
 
+from fieldapp.commands.custody import TO
 from fieldapp.commands.last_use import EXACT, WHERE
 from fieldapp.domain.protocols import read_protocol
 from fieldapp.domain.protocols.parts import RESERVED
@@ -41,12 +55,14 @@ from fieldapp.reading.part import Part, read_json
 from fieldapp.reading.rounds import RoundFile
 from fieldapp.rehearsal.day import BEGINS, FIRST_NUMBER
 from fieldapp.rehearsal.day import LastUse as LastUse
+from fieldapp.rehearsal.day import Load as Load
+from fieldapp.rehearsal.day import Photo as Photo
 from fieldapp.rehearsal.day import Report as Report
 from fieldapp.rehearsal.day import Script as Script
 from fieldapp.rehearsal.day import VisitScript as VisitScript
 from fieldapp.words import N_
 
-WAITS = ("here", "away")
+WAITS = ("here", "away", "not")
 FILLS = ("line", "below", "over", "spilled")
 ANALYTES = ("lead", "copper")
 
@@ -73,7 +89,7 @@ def read_script(data: bytes, path_name: str, planned: RoundFile) -> Script:
 
 
 def _script(part: Part, planned: RoundFile) -> Script:
-    part.only("begins", "laboratory_number", "visits", "reports", "results")
+    part.only("begins", "laboratory_number", "visits", "coolers", "reports", "results")
     asked = _asked(planned)
     visits = {visit.visit: asked.get(visit.protocol, {}) for visit in planned.visits}
     draws = {(visit.visit, draw["draw"]) for visit in planned.visits for draw in visit.draws}
@@ -81,11 +97,12 @@ def _script(part: Part, planned: RoundFile) -> Script:
     results: dict[tuple[str, int, str], str] = {}
     for one in _blocks(part, "results"):
         results.update(_result(one, draws, reports))
-    read = [_visit(one, visits) for one in _blocks(part, "visits")]
+    read = _both_ways([_visit(one, visits) for one in _blocks(part, "visits")])
     return Script(
         begins=_time(part, "begins") or BEGINS,
         laboratory_number=part.text("laboratory_number", optional=True) or FIRST_NUMBER,
         visits={one.visit: one for one in read},
+        loads=tuple(_load(one, planned) for one in _blocks(part, "coolers")),
         reports=reports,
         results=results,
         notes=tuple(part.findings.notes),
@@ -110,7 +127,9 @@ def _asked(planned: RoundFile) -> dict[str, dict[str, tuple[str, ...]]]:
 
 
 def _visit(part: Part, known: Mapping[str, Mapping[str, tuple[str, ...]]]) -> VisitScript:
-    part.only("id", "arrives", "waits", "last_use", "answers", "fill")
+    part.only(
+        "id", "arrives", "waits", "last_use", "answers", "fill", "photos", "swapped", "left_behind"
+    )
     visit = part.id("id")
     if visit and visit not in known:
         part.fault("not-listed", "id", visit, list="routes")
@@ -122,7 +141,46 @@ def _visit(part: Part, known: Mapping[str, Mapping[str, tuple[str, ...]]]) -> Vi
         last_use=_last_use(use) if use else LastUse(),
         answers=_answers(part, known.get(visit, {})),
         fill=_fills(part),
+        photos=tuple(_photo(one) for one in _blocks(part, "photos")),
+        swapped=part.word("swapped", tuple(known)) if part.has("swapped") else "",
+        left_behind=frozenset(part.wholes("left_behind", 1, 99) if part.has("left_behind") else ()),
     )
+
+
+def _both_ways(read: list[VisitScript]) -> list[VisitScript]:
+    """Return the visits with each swap told at both of them."""
+    other = {one.swapped: one.visit for one in read if one.swapped}
+    told = {one.visit: one for one in read}
+    for visit, swapped in other.items():
+        told[visit] = replace(told.get(visit, VisitScript(visit)), swapped=swapped)
+    return list(told.values())
+
+
+def _photo(part: Part) -> Photo:
+    part.only("draw", "says")
+    draw = part.whole("draw", 1, 99) if part.has("draw") else 0
+    return Photo(draw or 0, part.text("says", optional=True))
+
+
+def _load(part: Part, planned: RoundFile) -> Load:
+    part.only("route", "box", "seals", "visits", "to", "taken_by", "bench_reads")
+    route = part.word("route", [one.route for one in planned.routes])
+    here = [one.visit for one in planned.visits if one.route == route]
+    people = [one.person for one in planned.people]
+    return Load(
+        route=route,
+        box=part.text("box"),
+        seals=_seals(part, "seals"),
+        visits=part.words("visits", here) if part.has("visits") else (),
+        to=part.word("to", TO) if part.has("to") else TO[0],
+        taken_by=part.word("taken_by", people) if part.has("taken_by") else "",
+        bench_reads=_seals(part, "bench_reads") if part.has("bench_reads") else (),
+    )
+
+
+def _seals(part: Part, key: str) -> tuple[str, ...]:
+    """Return the numbers of a text that parts them by commas."""
+    return tuple(number.strip() for number in part.text(key).split(",") if number.strip())
 
 
 def _last_use(part: Part) -> LastUse:

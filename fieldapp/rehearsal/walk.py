@@ -133,7 +133,11 @@ class _Walk:
     def _receive(self, central: str) -> None:
         """Receive every filled bottle at the Bench."""
         self.way.receive(Browser(central))
-        self._tell(f"Bench: {len(self.way.drawn)} bottles scanned.")
+        self._tell(f"Bench: {self._seen()}{len(self.way.came())} bottles scanned.")
+
+    def _seen(self) -> str:
+        coolers = len(self.way.coolers)
+        return f"{coolers} cooler{'s' if coolers > 1 else ''} opened, " if coolers else ""
 
     def _results(self) -> None:
         """Import the laboratory's file at central, over its own door for commands."""

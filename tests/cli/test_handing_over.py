@@ -137,7 +137,7 @@ def test_progress_of_the_running_node_is_shown_to_the_one_who_asked(held: at_wor
     seen: list[tuple[str, int, int]] = []
     data = {"route": nodes.ROUTE}
     hand_over(held.folder, "labels", data, lambda *step: seen.append(step))
-    assert seen[-1] == ("labels", 9, 9)
+    assert seen[-1] == ("labels", 11, 11)
     assert [done for _, done, _ in seen] == sorted(done for _, done, _ in seen)
 
 

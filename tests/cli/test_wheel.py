@@ -97,7 +97,7 @@ def test_installed_elsewhere_it_rehearses_the_shipped_round(
     assert Path(where.stdout.strip()) == installed.target / "fieldapp" / "cli.py"
     walked = walks.run("rehearse", "--json", cwd=elsewhere, env=env)
     assert walked.code == 0, walked.err
-    assert walked.bottles["resulted"] == 9
+    assert walked.bottles["resulted"] == 11
     assert json.loads(walked.out)["chain"] == "intact"
     assert list(home.rglob("*")) == []
     assert list(spare.rglob("*")) == []

@@ -40,9 +40,7 @@ class Nodes:
     def walk(self, visits: list[str]) -> None:
         """Walk those visits at the tablet's pages."""
         for visit in visits:
-            walked = self.way.visit(self.browser, visit)
-            assert walked.walk() is None
-            self.way.drawn |= {(visit, draw) for draw in walked.carried}
+            assert self.way.take(self.way.visit(self.browser, visit)) is None
 
     def exchange(self) -> dict[str, object]:
         """Send and fetch on the tablet."""

@@ -95,12 +95,13 @@ def shipped_plan() -> dict[str, Any]:
 
 
 def only(plan: dict[str, Any], visits: Iterable[str]) -> dict[str, Any]:
-    """Leave the plan with these visits alone, in the rehearsal too."""
+    """Leave the plan with these visits alone, in the rehearsal too; its bottles in no cooler."""
     wanted = set(visits)
     for route in plan["routes"]:
         route["visits"] = [one for one in route["visits"] if one["id"] in wanted]
     script = plan["rehearsal"]
     script["visits"] = [one for one in script["visits"] if one["id"] in wanted]
+    script.pop("coolers", None)
     script["results"] = [one for one in script["results"] if one["visit"] in wanted]
     return plan
 

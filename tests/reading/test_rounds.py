@@ -350,8 +350,8 @@ def test_the_clean_day_reads_clean():
     found = read_round(clean_day(), "clean-day.json")
     assert [note.kind for note in found.notes] == ["protocol-outside-in-force"]
     purposes = [draw["purpose"] for visit in found.visits for draw in visit.draws]
-    assert len(found.visits) == 7
-    assert len(purposes) == 9
+    assert len(found.visits) == 8
+    assert len(purposes) == 11
     assert purposes.count("blank") == purposes.count("request") == 1
     first_litres = [visit for visit in found.visits if visit.protocol == "first-litre"]
     compliance = [v for v in first_litres if v.draws[0]["purpose"] == "compliance"]
