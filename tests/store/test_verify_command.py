@@ -76,7 +76,7 @@ def test_verify_needs_nothing_but_the_folder(folder, tmp_path):
 
 
 def _source() -> str:
-    return str(Path(cli.__file__).resolve().parents[1])
+    return str(Path(cli.__file__).resolve().parents[2])
 
 
 def unguarded(folder: Path) -> sqlite3.Connection:

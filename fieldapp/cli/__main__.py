@@ -1,0 +1,5 @@
+"""``python -m fieldapp.cli``."""
+
+from fieldapp.cli import main
+
+main()
