@@ -97,7 +97,7 @@ def _script(part: Part, planned: RoundFile) -> Script:
     results: dict[tuple[str, int, str], str] = {}
     for one in _blocks(part, "results"):
         results.update(_result(one, draws, reports))
-    read = _both_ways([_visit(one, visits) for one in _blocks(part, "visits")])
+    read = _both_ways([_visit(one, visits, draws) for one in _blocks(part, "visits")])
     return Script(
         begins=_time(part, "begins") or BEGINS,
         laboratory_number=part.text("laboratory_number", optional=True) or FIRST_NUMBER,
@@ -126,7 +126,9 @@ def _asked(planned: RoundFile) -> dict[str, dict[str, tuple[str, ...]]]:
     return asked
 
 
-def _visit(part: Part, known: Mapping[str, Mapping[str, tuple[str, ...]]]) -> VisitScript:
+def _visit(
+    part: Part, known: Mapping[str, Mapping[str, tuple[str, ...]]], draws: set[tuple[str, int]]
+) -> VisitScript:
     part.only(
         "id", "arrives", "waits", "last_use", "answers", "fill", "photos", "swapped", "left_behind"
     )
@@ -141,9 +143,11 @@ def _visit(part: Part, known: Mapping[str, Mapping[str, tuple[str, ...]]]) -> Vi
         last_use=_last_use(use) if use else LastUse(),
         answers=_answers(part, known.get(visit, {})),
         fill=_fills(part),
-        photos=tuple(_photo(one) for one in _blocks(part, "photos")),
-        swapped=part.word("swapped", tuple(known)) if part.has("swapped") else "",
-        left_behind=frozenset(part.wholes("left_behind", 1, 99) if part.has("left_behind") else ()),
+        photos=tuple(_photo(one, visit, draws) for one in _blocks(part, "photos")),
+        swapped=part.word("swapped", [v for v in known if v != visit])
+        if part.has("swapped")
+        else "",
+        left_behind=_left_behind(part, visit, draws),
     )
 
 
@@ -156,10 +160,20 @@ def _both_ways(read: list[VisitScript]) -> list[VisitScript]:
     return list(told.values())
 
 
-def _photo(part: Part) -> Photo:
+def _photo(part: Part, visit: str, draws: set[tuple[str, int]]) -> Photo:
     part.only("draw", "says")
     draw = part.whole("draw", 1, 99) if part.has("draw") else 0
-    return Photo(draw or 0, part.text("says", optional=True))
+    if draw and (visit, draw) not in draws:
+        part.fault("not-listed", "draw", f"{visit}, {draw}", list="routes")
+    return Photo(draw, part.text("says", optional=True))
+
+
+def _left_behind(part: Part, visit: str, draws: set[tuple[str, int]]) -> frozenset[int]:
+    left = part.wholes("left_behind", 1, 99) if part.has("left_behind") else ()
+    for draw in left:
+        if (visit, draw) not in draws:
+            part.fault("not-listed", "left_behind", f"{visit}, {draw}", list="routes")
+    return frozenset(left)
 
 
 def _load(part: Part, planned: RoundFile) -> Load:

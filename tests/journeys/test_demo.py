@@ -289,5 +289,5 @@ def test_another_sites_page_presses_nothing(tmp_path: Path) -> None:
         assert shown.page().marks["data-mark-up"] == "yes"
         with pytest.raises(Trouble, match="405"):
             Browser(shown.line).open("/cut")
-        assert len(seen.bottles(shown.folder / "central")) == 10
+        assert len(seen.bottles(shown.folder / "central")) == 11
         shown.end()

@@ -28,12 +28,17 @@ def script_of(plan: Any) -> Script:
     return read_script(data, "clean-day.json", read_round(data, "clean-day.json"))
 
 
-def faults_of(*puts: tuple[str, Any]) -> set[tuple[str, str]]:
+def changed(*puts: tuple[str, Any]) -> Any:
+    """Return the shipped day with values put into its rehearsal."""
     plan = json.loads(clean_day())
     for path, value in puts:
         put(plan["rehearsal"], path, value)
+    return plan
+
+
+def faults_of(*puts: tuple[str, Any]) -> set[tuple[str, str]]:
     with pytest.raises(BadFile) as bad:
-        script_of(plan)
+        script_of(changed(*puts))
     for fault in bad.value.faults:
         assert_whole(fault)
     return {(fault.kind, fault.path.removeprefix("rehearsal.")) for fault in bad.value.faults}
@@ -222,10 +227,33 @@ def test_an_unknown_last_use_has_no_moment():
         ("results.0.value", "", "blank", "results[0].value"),
         ("reports", [], "not-listed", "results[0].analyte"),
         ("reports.0.unit", None, "missing", "reports[0].unit"),
+        ("visits.0.photos", [{"draw": 7}], "not-listed", "visits[0].photos[0].draw"),
+        ("visits.0.left_behind", [7], "not-listed", "visits[0].left_behind"),
+        ("visits.0.swapped", "V-0401", "word", "visits[0].swapped"),
+        ("visits.0.swapped", "V-0999", "word", "visits[0].swapped"),
+        ("coolers.0.route", "R-9", "word", "coolers[0].route"),
+        ("coolers.0.seals", None, "missing", "coolers[0].seals"),
+        ("coolers.0.visits", ["V-0999"], "word", "coolers[0].visits[0]"),
+        ("coolers.0.to", "a friend", "word", "coolers[0].to"),
+        ("coolers.0.taken_by", "clerk-9", "word", "coolers[0].taken_by"),
     ],
 )
 def test_what_is_wrong_in_the_block_is_named(path, value, kind, where):
     assert (kind, where) in faults_of((path, value))
+
+
+def test_a_swap_is_told_at_one_visit_and_stands_at_both():
+    script = script_of(changed(("visits.0.swapped", "V-0405")))
+    assert script.visit("V-0401").swapped == "V-0405"
+    assert script.visit("V-0405").swapped == "V-0401"
+    assert script.visit("V-0405").last_use == script_of(CLEAN).visit("V-0405").last_use
+    assert script.visit("V-0406").swapped == ""
+
+
+def test_seals_are_parted_by_commas_and_read_as_put_on_unless_told():
+    first, second = script_of(CLEAN).loads
+    assert (first.box, first.seals, first.bench_reads) == ("3", ("88 214",), ())
+    assert (second.seals, second.visits) == (("61 007", "61 008"), ())
 
 
 BLOCK_LEAVES = [way for way in leaves(CLEAN["rehearsal"])]
