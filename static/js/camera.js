@@ -21,13 +21,15 @@ class Camera {
     this.live = place.querySelector("[data-camera-live]")
     this.view = place.querySelector("[data-camera-view]")
     this.video = place.querySelector("video")
-    this.says = place.querySelector("[data-camera-says]")
+    this.sayings = [...place.querySelectorAll("[data-camera-says]")]
     this.stream = null
   }
 
   start() {
+    this.place.classList.add("camera--ready")
     this.file.addEventListener("change", () => this.readFile())
     this.place.querySelector("[data-camera-stop]").addEventListener("click", () => this.stop())
+    this.view.addEventListener("close", () => this.stop())
     this.root.addEventListener("visibilitychange", () => { if (this.root.hidden) this.stop() })
     addEventListener("pagehide", () => this.stop())
     if (!navigator.mediaDevices?.getUserMedia) return
@@ -37,7 +39,7 @@ class Camera {
 
   async readFile() {
     if (!this.file.files.length) return
-    this.says.textContent = this.place.dataset.looking
+    this.say(this.place.dataset.looking)
     const answer = await this.ask(this.file.files[0])
     // emptied, so that the next picture is noticed though its file has the same name
     if (answer.code || answer.kind) this.file.value = ""
@@ -45,7 +47,6 @@ class Camera {
   }
 
   async watch() {
-    this.says.textContent = this.place.dataset.looking
     try {
       this.stream = await navigator.mediaDevices.getUserMedia({
         audio: false, video: { facingMode: "environment", width: { ideal: WIDTH } },
@@ -54,11 +55,11 @@ class Camera {
       await this.video.play()
     } catch {
       this.stop()
-      this.says.textContent = this.place.dataset.barred
+      this.say(this.place.dataset.barred)
       return
     }
-    this.view.hidden = false
-    this.live.hidden = true
+    this.say(this.place.dataset.looking)
+    this.view.showModal()
     this.look()
   }
 
@@ -73,7 +74,7 @@ class Camera {
         this.hear(answer)
         return
       }
-      this.says.textContent = answer.kind === "no-code-seen" ? this.place.dataset.looking : answer.says
+      this.say(answer.kind === "no-code-seen" ? this.place.dataset.looking : answer.says)
       await new Promise(resolve => setTimeout(resolve, EVERY_MS - (performance.now() - began)))
     }
   }
@@ -105,7 +106,7 @@ class Camera {
   }
 
   hear({ code, says }) {
-    this.says.textContent = code ? "" : says
+    this.say(code ? "" : says)
     if (!code) return
     this.field.value = code
     if (this.place.hasAttribute("data-submit")) this.form.requestSubmit()
@@ -116,8 +117,11 @@ class Camera {
     this.stream?.getTracks().forEach(track => track.stop())
     this.stream = null
     this.video.srcObject = null
-    this.view.hidden = true
-    if (navigator.mediaDevices?.getUserMedia) this.live.hidden = false
-    this.says.textContent = ""
+    if (this.view.open) this.view.close()
+    this.say("")
+  }
+
+  say(sentence) {
+    this.sayings.forEach(place => { place.textContent = sentence })
   }
 }

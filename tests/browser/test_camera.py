@@ -117,7 +117,7 @@ def test_a_photographed_label_sets_the_bottle_without_scripts(tap, root, browser
 def test_a_picture_without_a_code_is_said_and_the_next_one_is_read(tap, root, phone, tmp_path):
     choose(phone, root)
     phone.set_input_files("#picture-code", picture(tmp_path))
-    expect(phone.locator("[data-camera-says]")).to_contain_text("No bottle code can be read")
+    expect(phone.locator("[data-camera-says]").first).to_contain_text("No bottle code can be read")
     expect(phone.locator("h1")).to_have_text(SET)
     assert tap.facts(VISIT, "bottle.set") == []
     phone.set_input_files("#picture-code", picture(tmp_path, tap.codes[VISIT]))
@@ -127,7 +127,7 @@ def test_a_picture_without_a_code_is_said_and_the_next_one_is_read(tap, root, ph
 def test_a_filmed_label_sets_the_bottle(tap, root, film):
     page = film(tap.codes[VISIT])
     choose(page, root)
-    page.click("text=Read it with the camera")
+    page.click("text=Use the camera")
     expect(page.locator("h1")).to_have_text(FILL, timeout=20_000)
     assert [one.bottle for one in tap.facts(VISIT, "bottle.set")] == [tap.codes[VISIT]]
 
@@ -139,15 +139,17 @@ def test_the_camera_shows_what_it_sees_and_ends_at_a_press_and_when_the_page_is_
     choose(page, root)
     asked: list[str] = []
     page.on("request", lambda one: asked.append(one.url) if one.url.endswith("/scan") else None)
-    for end in ("press", "leave"):
-        page.click("text=Read it with the camera")
+    for end in ("press", "escape", "leave"):
+        page.click("text=Use the camera")
         expect(page.locator("video")).to_be_visible()
-        expect(page.locator("[data-camera-says]")).to_contain_text("Looking for the code")
+        expect(page.locator("dialog [data-camera-says]")).to_contain_text("Looking for the code")
         assert page.evaluate("document.querySelector('video').srcObject.active")
         with page.expect_request("**/scan"):
             pass
         if end == "press":
             page.click("text=Stop the camera")
+        elif end == "escape":
+            page.keyboard.press("Escape")
         else:
             page.evaluate(
                 "Object.defineProperty(document, 'hidden', { get: () => true });"
@@ -161,8 +163,8 @@ def test_the_camera_shows_what_it_sees_and_ends_at_a_press_and_when_the_page_is_
 
 def test_a_browser_without_a_camera_says_what_to_do_instead(root, phone):
     choose(phone, root)
-    phone.click("text=Read it with the camera")
-    says = phone.locator("[data-camera-says]")
+    phone.click("text=Use the camera")
+    says = phone.locator("[data-camera-says]").first
     expect(says).to_have_text("The camera cannot be used here. Photograph the code, or type it.")
     expect(phone.locator("video")).to_be_hidden()
 
@@ -171,8 +173,17 @@ def test_a_page_of_another_machine_over_plain_http_offers_no_film(root, phone):
     # what a browser lends there: no mediaDevices at all
     phone.add_init_script("Object.defineProperty(navigator, 'mediaDevices', { value: undefined })")
     choose(phone, root)
-    expect(phone.locator("#picture-code")).to_be_visible()
+    expect(phone.locator("label[for=picture-code]")).to_be_visible()
     expect(phone.locator("[data-camera-live]")).to_be_hidden()
+
+
+def test_the_file_of_a_picture_is_reached_by_keyboard(root, phone):
+    choose(phone, root)
+    expect(phone.locator("#code")).to_be_focused()
+    phone.keyboard.press("Tab")
+    expect(phone.locator("#picture-code")).to_be_focused()
+    with phone.expect_file_chooser():
+        phone.keyboard.press("Space")
 
 
 def test_a_wedge_scanner_types_beside_the_camera_as_before(tap, root, phone):
@@ -205,7 +216,7 @@ def test_the_counter_receives_what_is_photographed_and_what_is_filmed(tap, root,
     page.set_input_files("#picture-bottle", picture(tmp_path, tap.codes[VISIT]))
     expect(page.locator("#answer")).to_contain_text(re.compile("In"))
     expect(page.locator(".counts")).to_contain_text("1 in")
-    page.click("text=Read it with the camera")
+    page.click("text=Use the camera")
     expect(page.locator("#answer")).to_contain_text("In already", timeout=20_000)
     with tap.pages() as pages:
         story = pages.story(f"bottle:{tap.codes[VISIT]}")
@@ -216,7 +227,7 @@ def test_a_photo_note_is_saved_and_seen_on_the_visits_pages(tap, root, phone, tm
     file = tmp_path / "IMG_0002.JPG"
     file.write_bytes(from_camera(6, marked(1200, 800)))
     choose(phone, root)
-    phone.click("text=Photograph it")
+    phone.click('a:text-is("Photo")')
     phone.set_input_files("#photo-file", file)
     phone.fill("#caption", "A softener before the tap")
     phone.click("text=Save the photo")
