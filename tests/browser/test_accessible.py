@@ -105,13 +105,16 @@ def test_every_step_of_a_pair_and_of_a_visit_that_waits_passes_axe(day: Day, pho
     for visit, script in (
         ("V-0403", VisitScript("V-0403", last_use=LastUse("at", "bath", "01:00", "", None))),
         ("V-0404", VisitScript("V-0404", waits="away")),
+        ("V-0408", VisitScript("V-0408", waits="away")),
     ):
         codes = {draw: code for (of, draw), code in day.codes.items() if of == visit}
         day.time.until(to_utc("2027-05-04T06:20", day.time.zone))
-        while Visit(walker, day.time, visit, script, codes, "W. Oddquist").walk() is not None:
-            pass
+        back = Visit(walker, day.time, visit, script, codes, "W. Oddquist").walk()
+        while back is not None:
+            day.time.until(back)
+            back = Visit(walker, day.time, visit, script, codes, "W. Oddquist").walk()
 
-    assert {"Ask", "Sign", "Fill bottle n", "Set bottle n", "Fill n to n"} <= seen
+    assert {"Ask", "Sign", "Fill bottle n", "Set bottle n", "Fill n to n", "Run", "Wait"} <= seen
 
 
 @pytest.mark.parametrize(("width", "size"), [(320, "100%"), (640, "200%")])
