@@ -235,3 +235,42 @@ def test_the_done_at_of_a_fill_is_corrected_in_local_time(tap: Tap, sampler: Rea
     with tap.pages() as pages:
         now = next(e for e in pages.recorded(VISIT) if e.fact.kind == "bottle.filled").done_at
     assert timedelta(minutes=14) < before - now < timedelta(minutes=17)
+
+
+# every code on every page
+
+GROUPED = re.compile(r"\b[0-9A-Z]{4}-[0-9A-Z]{4}-[0-9A-Z]{3}\b")
+
+
+def loose_codes(page: str) -> list[str]:
+    """Return the codes that a page shows outside a link to a story."""
+    for gone in (
+        r"<title>.*?</title>",
+        r'<h1><span class="code">.*?</h1>',  # the story's own heading
+        r'<a class="code" href="/story/[^>]*>.*?</a>',
+        r'<span class="unseen">.*?</span>',  # the rail, said to a screen reader
+        r'="[^"]*"',
+    ):
+        page = re.sub(gone, "", page, flags=re.DOTALL)
+    return [page[max(0, one.start() - 60) : one.end()] for one in GROUPED.finditer(page)]
+
+
+def test_a_code_outside_a_link_is_seen_by_this_test():
+    assert loose_codes("<p>Bottle 2HB4-X90T-C7T</p>")
+    assert not loose_codes('<a class="code" href="/story/2HB4X90TC7T">2HB4-X90T-C7T</a>')
+
+
+def test_every_code_on_every_page_opens_its_story(tap: Tap, sampler: Reader):
+    tap.decide(lambda p, r: bench.receive(p, r, bottle=tap.codes[VISIT], reason="", counted=False))
+    tap.begin(OTHER)
+    code = tap.codes[VISIT]
+    with tap.pages() as pages:
+        findings = [row["finding"] for row in pages.rows("SELECT finding FROM p_finding")]
+    for path in (
+        f"/kitchen/visits/{VISIT}", f"/kitchen/visits/{OTHER}", "/kitchen/routes/north",
+        "/kitchen/routes/north/count", f"/story/{code}", f"/story/visits/{VISIT}",
+        "/bench/", f"/bench/?bottle={code}", "/desk/", "/desk/rounds/spring",
+        "/desk/rounds/spring?show=filled", "/desk/rounds/spring?show=findings",
+        f"/desk/bottles/{code}", *(f"/desk/findings/{one}" for one in findings),
+    ):  # fmt: skip
+        assert loose_codes(sampler.read(path)) == [], path
