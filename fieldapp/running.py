@@ -6,6 +6,7 @@ import os
 import secrets
 import socket
 import threading
+import time
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -17,6 +18,9 @@ from sync.blobs import SILENCE_S
 from sync.errors import FolderHeld, SyncError, Unsuitable
 
 RUNNING = "running.json"
+STARTING_S = 5.0
+"""A node that starts holds its folder this long at most before it answers; our choice."""
+LOOK_AGAIN_S = 0.05
 THREADS = 4
 """Four threads and one write lock: about a thousand durable posts a second (design 8)."""
 
@@ -164,15 +168,21 @@ def hand_over(
     """
     from fieldapp import work
 
-    try:
-        store = Store.open(folder)
-    except FolderHeld:
-        running = read_running(folder)
-        if running is None:
-            raise
-        return _hand_to(running, name, asked, progress)
-    with store:
-        return work.do(store, name, asked, progress)
+    until = time.monotonic() + STARTING_S
+    while True:
+        try:
+            store = Store.open(folder)
+        except FolderHeld:
+            running = read_running(folder)
+            if running is not None:
+                return _hand_to(running, name, asked, progress)
+            if time.monotonic() > until:
+                raise
+            # it holds the folder and does not answer yet: a node that starts or ends
+            time.sleep(LOOK_AGAIN_S)
+            continue
+        with store:
+            return work.do(store, name, asked, progress)
 
 
 def _hand_to(

@@ -12,7 +12,7 @@ from urllib import error, request
 
 import pytest
 
-import fieldapp.store
+import fieldapp.store.disk
 from fieldapp.running import RUNNING, HandedBack, hand_over, read_running
 from fieldapp.store import Store
 from sync.errors import FolderHeld
@@ -40,7 +40,7 @@ def opened(monkeypatch: pytest.MonkeyPatch) -> list[str]:
             found.append(str(database))
             return connect(database, *given, **more)
 
-    monkeypatch.setattr(fieldapp.store, "sqlite3", Watched())
+    monkeypatch.setattr(fieldapp.store.disk, "sqlite3", Watched())
     return found
 
 
