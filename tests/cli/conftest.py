@@ -55,3 +55,9 @@ def planned_desk(tmp_path_factory: pytest.TempPathFactory) -> Path:
 def desk(planned_desk: Path, tmp_path: Path) -> Path:
     """Give a copy of that node to this test alone."""
     return at_work.copied(planned_desk, tmp_path / "desk")
+
+
+@pytest.fixture(autouse=True)
+def no_waiting_for_a_start(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Let a command give up at once on a folder whose holder does not answer."""
+    monkeypatch.setattr("fieldapp.running.STARTING_S", 0.0)
