@@ -147,7 +147,7 @@ def test_labels_and_their_qr_codes_hold_no_private_text(kept: Kept, tmp_path: Pa
     document = pdfium.PdfDocument(pdf)
     pictures = [document[n].render(scale=150 / 72).to_pil() for n in range(len(document))]
     in_qr = [read.text for picture in pictures for read in zxingcpp.read_barcodes(picture)]
-    assert len(in_qr) == 9
+    assert len(in_qr) == 11
     assert {normalise(text) for text in in_qr} == set(in_qr), "eleven characters, nothing else"
     document.close()
 
@@ -233,7 +233,7 @@ def test_a_device_of_the_bench_alone_fetches_the_bottles_and_no_private_byte(
             assert found_in(path.read_bytes()) == [], path.name
     with Store.open(counter) as store, store.pages() as pages:
         held = pages.bottles(round_id=nodes.ROUND)
-        assert len(held) == 9
+        assert len(held) == 11
         assert all(bottle["filled"] and bottle["received_at"] for bottle in held)
 
 
@@ -266,7 +266,7 @@ def test_bench_and_desk_show_no_resident(kept: Kept, tmp_path: Path) -> None:
     with Store.open(copied(kept, "central", tmp_path)) as store:
         reader = Reader(SimpleNamespace(store=store), "coordinator-1")  # type: ignore[arg-type]
         seen = crawl(reader, ["/bench/", "/desk/"])
-    assert any(path.startswith("/desk/bottles/") for path in seen)
+    assert any(path.startswith("/story/") for path in seen)
     assert any(path.startswith("/desk/rounds/") for path in seen)
     for path, page in seen.items():
         assert found_in(page, ["sites"]) == [], path
@@ -278,7 +278,7 @@ def kitchen(pair: nodes.Pair) -> Reader:
 
 
 def crawl(reader: Reader, begin: Iterable[str]) -> dict[str, str]:
-    """Return what the links of Bench and Desk lead to by path, of papers their words too."""
+    """Return what links of Bench, Desk and stories lead to by path, of papers their words too."""
     ahead, seen = list(begin), dict[str, str]()
     while ahead and len(seen) < 60:
         path = ahead.pop(0)
@@ -290,7 +290,7 @@ def crawl(reader: Reader, begin: Iterable[str]) -> dict[str, str]:
         if answer.mimetype == "application/pdf":
             seen[path] += words_of(answer.get_data())
             continue
-        links = re.findall(r'href="(/(?:desk|bench)/[^"#]*)"', seen[path])
+        links = re.findall(r'href="(/(?:desk|bench|story)/[^"#]*)"', seen[path])
         ahead += [link.replace("&amp;", "&") for link in links]
     return seen
 
