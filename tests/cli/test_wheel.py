@@ -94,7 +94,7 @@ def test_installed_elsewhere_it_rehearses_the_shipped_round(
         [sys.executable, "-c", "import fieldapp.cli, sync; print(fieldapp.cli.__file__)"],
         cwd=elsewhere, env=env, capture_output=True, text=True, timeout=60, check=True,
     )  # fmt: skip
-    assert Path(where.stdout.strip()) == installed.target / "fieldapp" / "cli.py"
+    assert Path(where.stdout.strip()) == installed.target / "fieldapp" / "cli" / "__init__.py"
     walked = walks.run("rehearse", "--json", cwd=elsewhere, env=env)
     assert walked.code == 0, walked.err
     assert walked.bottles["resulted"] == 11
