@@ -1,5 +1,6 @@
 """Ways to reach a central in tests: in the process, over HTTP, and over a line full of faults."""
 
+import io
 import random
 import ssl
 import threading
@@ -8,11 +9,21 @@ from contextlib import contextmanager
 from http.server import BaseHTTPRequestHandler, ThreadingHTTPServer
 from typing import Any
 
+from sync.blobs import NONCE
 from sync.endpoint import Endpoint
 from sync.entry import Realm
 from sync.errors import NoContact
 from sync.http import HttpPeer
-from sync.peer import Answer, LoopbackPeer, decode, encode, unpack
+from sync.peer import (
+    Answer,
+    Carried,
+    LoopbackPeer,
+    carried,
+    decode,
+    encode,
+    piece_headers,
+    unpack,
+)
 
 FAULTS = ("drop before", "drop after", "twice", "stale", "truncate", "portal")
 
@@ -29,6 +40,7 @@ class FaultyPeer:
         self.endpoint, self.realm, self.faults = endpoint, realm, faults
         self.old: list[tuple[int, dict[str, str], bytes]] = []
         self.happened: list[str] = []
+        self.lock = threading.Lock()
 
     def send(self, path: str, body: Mapping[str, Any], *, token: str = "") -> Answer:
         """Carry one request, or do to it what is due."""
@@ -50,6 +62,28 @@ class FaultyPeer:
             code, headers, raw = self.old[0]
         self.old.append((code, headers, raw))
         return decode(self.realm, code, headers, raw)
+
+    def carry(
+        self, method: str, path: str, headers: Mapping[str, str], data: bytes, *, token: str = ""
+    ) -> Carried:
+        """Carry one piece of a blob, or do to it what is due."""
+        with self.lock:
+            fault = next(self.faults, None)
+            if fault is not None:
+                self.happened.append(fault)
+        if fault == "drop before":
+            raise NoContact("the piece was lost")
+        line = LoopbackPeer(self.endpoint(), self.realm)
+        kept = data[: len(data) // 2] if fault == "truncate" else data
+        sent = piece_headers(headers, data, token)
+        code, answered, raw = line.endpoint.blob(method, path, sent, io.BytesIO(kept))
+        if fault == "twice":
+            code, answered, raw = line.endpoint.blob(method, path, sent, io.BytesIO(kept))
+        if fault in ("drop after", "truncate"):
+            raise NoContact("the answer was lost")
+        nonce = "of another request" if fault in ("stale", "portal") else sent[NONCE]
+        named = {name.lower(): value for name, value in answered}
+        return carried(code, named, raw, nonce)
 
     def _carry(
         self, path: str, body: Mapping[str, Any], token: str
