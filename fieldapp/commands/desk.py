@@ -6,8 +6,8 @@ from fieldapp.domain.codes import grouped, normalise
 from fieldapp.domain.errors import RuleBroken, StepOver, Unknown
 from fieldapp.domain.facts import AnalysisDecided, BottleVoided, Fact, FindingSettled
 from fieldapp.domain.recorded import Reading
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.projections.pages import Pages, Row
-from fieldapp.projections.summaries import text
 
 VOID_WHYS = ("broken", "lost", "misprinted", "replaced", "other")
 

@@ -13,9 +13,9 @@ from fieldapp.domain.bottles import in_order
 from fieldapp.domain.custody import plain_seal
 from fieldapp.domain.facts import BottleReceived, CoolerOpened
 from fieldapp.domain.recorded import Recorded
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.projections import facts
 from fieldapp.projections.pages import Pages, Row
-from fieldapp.projections.summaries import text
 
 
 @dataclass(frozen=True, slots=True)

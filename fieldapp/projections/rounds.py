@@ -7,9 +7,9 @@ from typing import Any
 from fieldapp.domain.bottles import in_order
 from fieldapp.domain.facts import BottleReceived
 from fieldapp.domain.recorded import Recorded
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.projections import facts
 from fieldapp.projections.pages import Pages, Row
-from fieldapp.projections.summaries import text
 
 LATEST_RECEIPTS = 2000
 """So many receipts a counter looks back for those of the day; ten days of two hundred bottles."""

@@ -20,9 +20,9 @@ from fieldapp.domain.decision import Decision
 from fieldapp.domain.errors import RuleBroken
 from fieldapp.domain.facts import Fact
 from fieldapp.domain.recorded import Reading
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.identity import DATABASE as DATABASE
 from fieldapp.projections.pages import Pages
-from fieldapp.projections.summaries import text
 from fieldapp.schemas.facts import check_fact
 from fieldapp.store.disk import BALLAST as BALLAST
 from fieldapp.store.disk import REALM as REALM

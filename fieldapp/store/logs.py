@@ -8,8 +8,8 @@ from typing import Any
 from fieldapp import identity, projections
 from fieldapp.domain.facts import KINDS, Fact, LogOpened
 from fieldapp.domain.recorded import Reading
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.projections.pages import Pages
-from fieldapp.projections.summaries import text
 from fieldapp.scopes import scope_of
 from fieldapp.store.disk import REALM, Disk
 from sync import blobs, ledger

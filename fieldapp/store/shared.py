@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from fieldapp import identity, projections
-from fieldapp.projections.summaries import text
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.store.disk import REALM
 from fieldapp.store.logs import Logs
 from sync import ledger

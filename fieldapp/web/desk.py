@@ -12,9 +12,9 @@ from fieldapp.commands import desk
 from fieldapp.domain import rules
 from fieldapp.domain.codes import BadCode, normalise
 from fieldapp.domain.errors import Unknown
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.projections import answers, rounds
 from fieldapp.projections.pages import Row
-from fieldapp.projections.summaries import text
 from fieldapp.web import said, state
 from fieldapp.web.context import load, pages, perform, reading
 

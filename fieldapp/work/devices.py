@@ -9,8 +9,8 @@ from typing import Any
 from fieldapp import identity
 from fieldapp.commands.devices import enrol_device, places_of
 from fieldapp.domain.codes import ALPHABET
+from fieldapp.domain.timetext import format_utc as text
 from fieldapp.projections.pages import Pages
-from fieldapp.projections.summaries import text
 from fieldapp.store import Store
 from sync.encoding import b64, unb64
 from sync.errors import Refused

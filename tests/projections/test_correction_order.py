@@ -7,7 +7,7 @@ from pathlib import Path
 from fieldapp import projections
 from fieldapp.commands import corrections
 from fieldapp.domain.facts import EntryCorrected, EntryWithdrawn, PersonListed
-from fieldapp.projections import summaries
+from fieldapp.projections import plans
 from fieldapp.projections.tables import make_tables
 from tests import nodes
 from tests.tap import OTHER, SAMPLER, VISIT, Tap
@@ -65,7 +65,7 @@ def test_chains_of_corrections_give_the_same_pages_in_any_order(tmp_path: Path):
     for seed in range(15):
         shuffled = list(entries)
         random.Random(seed).shuffle(shuffled)
-        summaries._protocols.clear()
+        plans._protocols.clear()
         db = sqlite3.connect(":memory:", isolation_level=None)
         make_tables(db)
         for entry in shuffled:

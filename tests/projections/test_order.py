@@ -8,7 +8,7 @@ from hypothesis import strategies as st
 
 from fieldapp import projections
 from fieldapp.domain import facts
-from fieldapp.projections import summaries
+from fieldapp.projections import plans
 from fieldapp.projections.tables import make_tables
 from sync.entry import Entry
 from tests import nodes
@@ -23,7 +23,7 @@ def entries_of(store) -> list[Entry]:
 
 def tables_after(batches: list[list[Entry]]) -> dict[str, list[tuple[object, ...]]]:
     """Return the page tables of a node that those batches reached, one after the other."""
-    summaries._protocols.clear()  # a node that was started now has read no document yet
+    plans._protocols.clear()  # a node that was started now has read no document yet
     db = sqlite3.connect(":memory:", isolation_level=None)
     make_tables(db)
     for batch in batches:

@@ -11,7 +11,7 @@ import pytest
 from fieldapp import projections
 from fieldapp.commands import desk, drawing, kitchen, last_use
 from fieldapp.domain.facts import DeviationStated, EntryWithdrawn
-from fieldapp.projections import summaries
+from fieldapp.projections import plans
 from fieldapp.projections.tables import make_tables
 from tests import nodes
 from tests.tap import OTHER, VISIT, Tap
@@ -118,7 +118,7 @@ def test_a_swap_is_found_in_whatever_order_its_entries_arrive(tap: Tap):
     for seed in range(12):
         shuffled = list(entries)
         random.Random(seed).shuffle(shuffled)
-        summaries._protocols.clear()
+        plans._protocols.clear()
         db = sqlite3.connect(":memory:", isolation_level=None)
         make_tables(db)
         for entry in shuffled:
