@@ -55,8 +55,6 @@ ARROWS: dict[str, frozenset[str]] = {
     "photos": frozenset({"domain", "sync"}),
     "scanning": frozenset({"photos", "domain"}),
     "clock": frozenset({"domain"}),
-    "photos": frozenset({"domain", "sync"}),
-    "scanning": frozenset({"photos", "domain"}),
     "settings": frozenset(),
     "places": frozenset(),
     "domain": frozenset(),
