@@ -20,7 +20,8 @@ class PersonForm(Schema):
 @bp.get("/")
 def first() -> str:
     """Show who may hold this device and the places open on it."""
-    found = pages().people()
+    carries = store().get("person")  # whom this device was enrolled for comes first
+    found = sorted(pages().people(), key=lambda one: one["person"] != carries)
     return render_template("people.html", people=found, chosen=person(), then=_safe(request.args))
 
 
