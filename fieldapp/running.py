@@ -157,6 +157,40 @@ def _open_listen(store: Store, listen: str, certificate: str, key: str) -> Calla
     return server.stop  # type: ignore[no-any-return]
 
 
+def open_patiently(folder: Path) -> Store | Running:
+    """Open the folder's node; of a running one return where it answers.
+
+    A command that does its work, or a node that starts or ends, holds a folder for a moment
+    without saying where it answers: that moment is waited for.
+
+    Raises:
+        FolderHeld: another program holds the folder and does not say where it answers.
+    """
+    until = time.monotonic() + STARTING_S
+    while True:
+        try:
+            return Store.open(folder)
+        except FolderHeld:
+            running = read_running(folder)
+            if running is not None:
+                return running
+            if time.monotonic() > until:
+                raise
+            time.sleep(LOOK_AGAIN_S)
+
+
+def open_to_serve(folder: Path) -> Store:
+    """Open the folder's node for a process of its own.
+
+    Raises:
+        FolderHeld: it runs already, or something else holds the folder.
+    """
+    found = open_patiently(folder)
+    if isinstance(found, Running):
+        raise FolderHeld(folder)
+    return found
+
+
 def hand_over(
     folder: Path, name: str, asked: Mapping[str, Any], progress: Callable[[str, int, int], None]
 ) -> dict[str, Any]:
@@ -168,21 +202,11 @@ def hand_over(
     """
     from fieldapp import work
 
-    until = time.monotonic() + STARTING_S
-    while True:
-        try:
-            store = Store.open(folder)
-        except FolderHeld:
-            running = read_running(folder)
-            if running is not None:
-                return _hand_to(running, name, asked, progress)
-            if time.monotonic() > until:
-                raise
-            # it holds the folder and does not answer yet: a node that starts or ends
-            time.sleep(LOOK_AGAIN_S)
-            continue
-        with store:
-            return work.do(store, name, asked, progress)
+    found = open_patiently(folder)
+    if isinstance(found, Running):
+        return _hand_to(found, name, asked, progress)
+    with found as store:
+        return work.do(store, name, asked, progress)
 
 
 def _hand_to(

@@ -17,9 +17,9 @@ def serve(folder: Path, port: int | None) -> None:
 
     Example: tapwitness serve --data tablet
     """
-    from fieldapp.store import Store
+    from fieldapp.running import open_to_serve
 
-    with Store.open(folder) as store:
+    with open_to_serve(folder) as store:
         if not store.get("places"):
             with store.transaction():
                 store.put("places", "kitchen bench desk")
@@ -53,12 +53,12 @@ def central(
       tapwitness central --data central --invite sampler-1
     """
     from fieldapp.nodes import become_central
-    from fieldapp.store import Store
+    from fieldapp.running import open_to_serve
 
     if person:
         _invite(folder, person, as_json)
         return
-    with Store.open(folder) as store:
+    with open_to_serve(folder) as store:
         become_central(store)
         run_node_of(
             store, port=port or 0, door=True, listen=listen, certificate=certificate, key=key
