@@ -1,7 +1,7 @@
 """The sentence of each rule, deviation and finding, through gettext.
 
 Domain code names a kind with values; here stands what a person reads. A kind without a sentence
-fails ``tests/test_vocabulary.py``. Sentences are short, say what to do next and never promise that
+fails ``tests/test_house.py``. Sentences are short, say what to do next and never promise that
 water is safe.
 """
 
@@ -9,6 +9,7 @@ import gettext as _gettext
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from contextvars import ContextVar
+from functools import cache
 from pathlib import Path
 from typing import Any
 
@@ -33,18 +34,17 @@ def speaking(language: str) -> Iterator[None]:
 
 def gettext(text: str) -> str:
     """Return the text in the language spoken now; the text itself where none is written yet."""
-    return _catalogue().gettext(text)
+    return _catalogue(_language.get()).gettext(text)
 
 
 def ngettext(one: str, many: str, number: int) -> str:
     """Return the form of the text that goes with the number."""
-    return _catalogue().ngettext(one, many, number)
+    return _catalogue(_language.get()).ngettext(one, many, number)
 
 
-def _catalogue() -> _gettext.NullTranslations:
-    return _gettext.translation(
-        "tapwitness", TRANSLATIONS, languages=[_language.get()], fallback=True
-    )
+@cache
+def _catalogue(language: str) -> _gettext.NullTranslations:
+    return _gettext.translation("tapwitness", TRANSLATIONS, languages=[language], fallback=True)
 
 
 WORDS: dict[str, str] = {
