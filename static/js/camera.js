@@ -67,7 +67,9 @@ class Camera {
   async look() {
     while (this.stream) {
       const began = performance.now()
-      const answer = await this.ask(await this.frame())
+      const seen = await this.frame()
+      // stopped meanwhile, or a camera that gives no picture yet
+      const answer = this.stream && seen ? await this.ask(seen) : { kind: "no-code-seen" }
       if (!this.stream) return
       if (answer.code) {
         this.stop()
