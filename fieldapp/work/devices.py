@@ -15,7 +15,6 @@ from fieldapp.store import Store
 from sync.encoding import b64, unb64
 from sync.errors import Refused
 from sync.exchange import enrol as enrol_at
-from sync.http import HttpPeer
 
 CODE_LENGTH = 14
 """Crockford characters: 70 bits, one use, ten minutes (sync.md B7 asks for 64 at least)."""
@@ -95,6 +94,8 @@ def enrol(store: Store, *, url: str, code: str, progress: Callable[..., None]) -
     Returns:
         ``central``, ``person``, ``places``.
     """
+    from sync.http import HttpPeer  # brings requests, which a start need not pay for
+
     peer = HttpPeer(url, store.realm)
     try:
         answer = enrol_at(peer, store.realm, store.key, store.dev, _plain(code))

@@ -7,7 +7,6 @@ from typing import Any
 from fieldapp.store import Store
 from sync import exchange
 from sync.errors import Refused
-from sync.http import HttpPeer
 
 
 def send_and_fetch(
@@ -28,6 +27,8 @@ def send_and_fetch(
         Refused: this device is not enrolled anywhere.
         NoContact: nothing trustworthy answered; everything waits.
     """
+    from sync.http import HttpPeer  # brings requests, which a start need not pay for
+
     pin = store.central()
     if pin is None:
         raise Refused("not-enrolled", "This device is enrolled nowhere. Run 'tapwitness enrol'.")
