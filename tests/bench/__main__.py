@@ -29,8 +29,8 @@ Kitchen  A whole HTTP post that checks its form, reads what was recorded, decide
          and no process between; a bare Flask post is about four of those, so twenty are allowed.
 labels   Made from words: codes to QR, wordings fitted to the paper, drawn. The peers are handed the
          finished vectors. By the canvas's calls they are drawing alone, and making and fitting may
-         take twice as long again; written as text they are the least a file of them can take,
-         about half of the calls, so six of those are allowed."""
+         take twice as long again; written as text they are the least a file of them can take;
+         six of those are allowed, about twice what the calls take."""
 
 
 def main() -> None:
