@@ -6,7 +6,7 @@ key is never part of a fault: faults are printed and kept where private text mus
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import ClassVar
+from typing import Any, ClassVar, TypeVar
 
 from fieldapp.domain.errors import RuleBroken
 from fieldapp.words import N_, gettext, say
@@ -68,6 +68,9 @@ class BadFile(RuleBroken):
         super().__init__(file=self.faults[0].file, count=len(self.faults))
 
 
+_Told = TypeVar("_Told", bound=FileFault)
+
+
 class Findings:
     """The faults and notes of one file while it is read; none stands twice."""
 
@@ -77,35 +80,30 @@ class Findings:
         self.notes: list[Note] = []
         self._seen: set[str] = set()
 
-    def add(
-        self,
-        kind: str,
-        path: str = "",
-        value: object = "",
-        *,
-        about: str = "",
-        row: int = 0,
-        values: Mapping[str, object] | None = None,
-    ) -> None:
-        """Add a fault."""
-        fault = FileFault(kind, self.file, path, shown(value), _texts(values or {}), about, row)
+    def add(self, kind: str, path: str = "", value: object = "", **place: Any) -> None:
+        """Add a fault; ``place`` is ``about``, ``row`` and ``values`` as ``FileFault`` has them."""
+        fault = self._made(FileFault, kind, path, value, **place)
         if self._new(fault):
             self.faults.append(fault)
 
-    def note(
+    def note(self, kind: str, path: str = "", value: object = "", **place: Any) -> None:
+        """Add a note; ``place`` as for a fault."""
+        note = self._made(Note, kind, path, value, **place)
+        if self._new(note):
+            self.notes.append(note)
+
+    def _made(
         self,
+        of: type[_Told],
         kind: str,
-        path: str = "",
-        value: object = "",
+        path: str,
+        value: object,
         *,
         about: str = "",
         row: int = 0,
         values: Mapping[str, object] | None = None,
-    ) -> None:
-        """Add a note."""
-        note = Note(kind, self.file, path, shown(value), _texts(values or {}), about, row)
-        if self._new(note):
-            self.notes.append(note)
+    ) -> _Told:
+        return of(kind, self.file, path, shown(value), _texts(values or {}), about, row)
 
     def _new(self, fault: FileFault) -> bool:
         text = repr(fault)
